@@ -1,0 +1,102 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * Identity of modes along one axis of a sweep. In: the answers of a line of points, in order. Out:
+ * a branch number for each mode. Calls modes' types only.
+ * Symbols: re, im frequency; dre, dim its last step. Proof: tests/test_sweep.c. */
+#include "branches.h"
+
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "alloc.h"
+
+typedef struct {
+    double apart;
+    int before, now;
+} pairing;
+
+static int by_distance(const void *a, const void *b)
+{
+    const pairing *x = a, *y = b;
+
+    if (x->apart != y->apart)
+        return x->apart < y->apart ? -1 : 1;
+    if (x->before != y->before)
+        return x->before < y->before ? -1 : 1;
+    return (x->now > y->now) - (x->now < y->now);
+}
+
+static void release(th_branches *line)
+{
+    free(line->branch);
+    free(line->re);
+    free(line->im);
+    free(line->dre);
+    free(line->dim);
+}
+
+void th_branches_clear(th_branches *line)
+{
+    release(line);
+    memset(line, 0, sizeof *line);
+}
+
+th_status th_branches_next(th_branches *line, const th_solution *answer, double reach, int *branch,
+                           th_error *err)
+{
+    th_status st = TH_EBUG;
+    const size_t n = (size_t)answer->count, m = (size_t)line->count;
+    th_branches next = {.count = answer->count, .last = line->last};
+    pairing *pair = th_alloc(n * m, sizeof *pair);
+    int *from = th_alloc(n, sizeof *from); /* [n] 1 + index at the previous point, 0 when new */
+    int *taken = th_alloc(m, sizeof *taken);
+    size_t pairs = 0;
+
+    next.branch = th_alloc(n, sizeof *next.branch);
+    next.re = th_alloc(n, sizeof *next.re);
+    next.im = th_alloc(n, sizeof *next.im);
+    next.dre = th_alloc(n, sizeof *next.dre);
+    next.dim = th_alloc(n, sizeof *next.dim);
+    if (pair == NULL || from == NULL || taken == NULL || next.branch == NULL || next.re == NULL ||
+        next.im == NULL || next.dre == NULL || next.dim == NULL) {
+        st = th_fail(err, TH_ENOMEM, "sweep: branches of %d modes", answer->count);
+        goto done;
+    }
+    for (size_t j = 0; j < m; j++)
+        for (size_t i = 0; i < n; i++) {
+            const double apart = hypot(answer->mode[i].omega_re - line->re[j] - line->dre[j],
+                                       answer->mode[i].omega_im - line->im[j] - line->dim[j]);
+
+            if (apart <= reach)
+                pair[pairs++] = (pairing){apart, (int)j, (int)i};
+        }
+    qsort(pair, pairs, sizeof *pair, by_distance);
+    for (size_t k = 0; k < pairs; k++) {
+        if (taken[pair[k].before] || from[pair[k].now] != 0)
+            continue;
+        taken[pair[k].before] = 1;
+        from[pair[k].now] = pair[k].before + 1;
+    }
+    for (size_t i = 0; i < n; i++) {
+        const int j = from[i] - 1;
+
+        next.re[i] = answer->mode[i].omega_re;
+        next.im[i] = answer->mode[i].omega_im;
+        next.branch[i] = j >= 0 ? line->branch[j] : ++next.last;
+        next.dre[i] = j >= 0 ? next.re[i] - line->re[j] : 0.0;
+        next.dim[i] = j >= 0 ? next.im[i] - line->im[j] : 0.0;
+        branch[i] = next.branch[i];
+    }
+    release(line);
+    *line = next;
+    memset(&next, 0, sizeof next);
+    st = TH_OK;
+done:
+    release(&next);
+    free(pair);
+    free(from);
+    free(taken);
+    return st;
+}

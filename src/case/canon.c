@@ -1,0 +1,101 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * The canonical text of a case: the same for two files that differ in order, blanks, comments or
+ * in what came from overrides. It can be read again and gives the same case.
+ * In: checked entries, the shape. Out: th_case.text. Calls keys and status.
+ * Symbols: none. To change the order: rank. Proved by tests/test_case.c. */
+#define _POSIX_C_SOURCE 200809L
+
+#include "inside.h"
+
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+/* Lines are broken before this column where they can be: half of what the reader takes. */
+enum { COLUMNS = 98 };
+
+/* Place of an entry in its section: rows of the table, then keys of the shape, in their orders.
+ * Axes keep the order in which they were given: the first is the slowest. */
+static int rank(const th_shape *shape, const th_case_entry *entry)
+{
+    const char *key = entry->key;
+    th_case_key_id id = th_case_key_find(entry->section, key);
+
+    if (th_case_section_find(entry->section) == TH_SECTION_SWEEP)
+        return 0;
+    if (id != TH_KEYS)
+        return (int)id;
+    if (th_case_section_find(entry->section) == TH_SECTION_PLAN)
+        key += sizeof TH_TOLERANCE_PREFIX - 1;
+    return TH_KEYS + th_shape_key_find(shape, key);
+}
+
+/* Write one entry; a long list goes on in further lines, broken after commas. */
+static void write_entry(FILE *file, const th_case_entry *entry)
+{
+    int column = fprintf(file, "%s =", entry->key);
+
+    for (const char *p = entry->value; *p != '\0';) {
+        int length = (int)strcspn(p, ",");
+
+        length += p[length] == ',';
+        if (p > entry->value && column + 1 + length > COLUMNS)
+            column = fprintf(file, "\n    %.*s", length, p) - 1;
+        else
+            column += fprintf(file, " %.*s", length, p);
+        p += length;
+        p += strspn(p, " ");
+    }
+    (void)fputc('\n', file);
+}
+
+static void write_section(FILE *file, const th_case_source *source, const th_case *c,
+                          th_case_section section)
+{
+    const th_shape *shape = c->setup.shape;
+    const char *name = th_case_section_name(section);
+    bool used = section == TH_SECTION_PLAN && c->plan.present; /* an empty [plan] asks for one */
+    int last = -1, next;
+
+    for (int i = 0; i < source->entries && !used; ++i)
+        used = strcmp(source->entry[i].section, name) == 0;
+    if (used)
+        (void)fprintf(file, "%s[%s]\n", section > 0 ? "\n" : "", name);
+
+    do { /* all entries of the smallest rank above the last one */
+        next = -1;
+        for (int i = 0; i < source->entries; ++i) {
+            int place;
+
+            if (strcmp(source->entry[i].section, name) != 0)
+                continue;
+            place = rank(shape, &source->entry[i]);
+            if (place > last && (next < 0 || place < next))
+                next = place;
+        }
+        for (int i = 0; next >= 0 && i < source->entries; ++i) {
+            if (strcmp(source->entry[i].section, name) != 0 ||
+                rank(shape, &source->entry[i]) != next)
+                continue;
+            write_entry(file, &source->entry[i]);
+        }
+        last = next;
+    } while (next >= 0);
+}
+
+th_status th_case_text_write(const th_case_source *source, th_case *out, th_error *err)
+{
+    size_t size = 0;
+    FILE *file = open_memstream(&out->text, &size);
+    bool failed;
+
+    if (file == NULL)
+        return th_fail(err, TH_ENOMEM, "no memory for the text of the case");
+    for (int i = 0; i < TH_SECTIONS; ++i)
+        write_section(file, source, out, (th_case_section)i);
+    failed = ferror(file) != 0;
+    failed = fclose(file) != 0 || failed;
+    return failed ? th_fail(err, TH_ENOMEM, "no memory for the text of the case") : TH_OK;
+}

@@ -1,0 +1,95 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * What the commands share: options, exit codes, errors, output files, numbers in the units of the
+ * text view. The program sees the public headers only. */
+#ifndef CLI_H
+#define CLI_H
+
+#include <stdbool.h>
+#include <stdio.h>
+#include <twinhorizon/case.h>
+#include <twinhorizon/modes.h>
+#include <twinhorizon/status.h>
+#include <twinhorizon/table.h>
+
+/* Exit codes: a contract with scripts. */
+enum { CLI_DONE = 0, CLI_UNDECIDED = 1, CLI_USAGE = 2, CLI_INTERNAL = 3 };
+
+/* ---- options.c ------------------------------------------------------------------------------ */
+
+/* An option of a command: "--name VALUE". */
+typedef struct {
+    const char *name;  /* with its dashes */
+    const char *value; /* word for the value in the help */
+    const char *doc;
+    const char **place; /* where the value goes */
+} cli_option;
+
+enum { CLI_SET_MAX = 64 };
+
+/* What stands on the command line of a command that takes one case. */
+typedef struct {
+    const char *case_path;
+    const char *set[CLI_SET_MAX]; /* --set section.key=value, in order */
+    int sets;
+} cli_arguments;
+
+/* Read "CASE [--set ...] [options]". Prints one sentence and returns CLI_USAGE when it is wrong;
+ * prints the help and returns -1 (exit 0) for --help. */
+int cli_read(const char *command, const char *summary, int argc, char **argv,
+             const cli_option *option, int options, cli_arguments *out);
+
+/* Print a failure as one line on standard error; returns the exit code that goes with it. */
+int cli_failed(const th_error *err);
+
+/* Print "twinhorizon: ..." as one line on standard error; returns CLI_USAGE. */
+int cli_usage(const char *format, ...) TH_PRINTF(1, 2);
+
+/* ---- output.c ------------------------------------------------------------------------------- */
+
+/* Start a table in a file, or on standard output when path is "-". */
+th_status cli_table(const char *path, const th_column *column, int columns, const char *title,
+                    const th_case *c, th_table **out, th_error *err) TH_MUST_USE;
+
+/* A file that appears under its name only when it is complete. */
+typedef struct {
+    const char *path;
+    char *part;
+    FILE *stream;
+} cli_file;
+
+th_status cli_file_open(const char *path, cli_file *file, th_error *err) TH_MUST_USE;
+th_status cli_file_finish(cli_file *file, th_error *err) TH_MUST_USE;
+void cli_file_abandon(cli_file *file); /* after either, or after a failure in between */
+
+/* ---- view.c --------------------------------------------------------------------------------- */
+
+/* Factors and words of the text view: SI cases show Hz, /s, ms, um, mm/s, nK; reduced cases bare
+ * numbers. shown = reduced * factor. */
+typedef struct {
+    bool si;
+    double frequency, rate, time, length, speed, temperature, density;
+    const char *hertz, *per_second, *milliseconds, *micrometres, *speeds, *kelvin, *densities;
+} cli_view;
+
+cli_view cli_view_of(const th_case *c);
+
+enum { CLI_NUMBER = 40 };
+
+/* "0.0371345867": as many digits as the error leaves standing, at most ten. Returns buffer. */
+const char *cli_number(double value, double error, char buffer[CLI_NUMBER]);
+
+/* The unit of a CSV column: the SI unit in an SI case, NULL in a reduced one. */
+const char *cli_unit(const th_case *c, th_dimension dimension);
+
+/* Flow, horizons and pockets in a few lines. */
+void cli_print_flow(const th_case *c, const th_flow *flow, bool details);
+
+/* ---- commands, one file each ---------------------------------------------------------------- */
+
+int cli_solve(int argc, char **argv);
+int cli_flow(int argc, char **argv);
+int cli_sweep(int argc, char **argv);
+
+#endif

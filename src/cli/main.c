@@ -1,0 +1,78 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * The program: hands the command line to a command. A new command is one file with its function,
+ * one line in cli.h and one line in the table below. */
+#include <errno.h>
+#include <gsl/gsl_errno.h>
+#include <string.h>
+#include <twinhorizon/version.h>
+
+#include "cli.h"
+
+static const struct {
+    const char *name;
+    const char *doc;
+    int (*run)(int argc, char **argv);
+} command[] = {
+    {"solve", "modes, growth rates and verdict of one configuration", cli_solve},
+    {"sweep", "growth-rate table over the axes of a case", cli_sweep},
+    {"flow", "the stationary flow: horizons, pockets, the potential it needs", cli_flow},
+};
+enum { COMMANDS = sizeof command / sizeof command[0] };
+
+static void help(FILE *stream)
+{
+    fprintf(stream,
+            "twinhorizon %s: linear stability of sonic horizon pairs in Bose-Einstein "
+            "condensates\n\n",
+            th_version());
+    for (int i = 0; i < COMMANDS; i++)
+        fprintf(stream, "  twinhorizon %-6s CASE ...   %s\n", command[i].name, command[i].doc);
+    fprintf(stream, "\n  twinhorizon COMMAND --help    options of a command\n"
+                    "  twinhorizon --version         version\n\n"
+                    "Exit: 0 done; 1 finished, but something is undecided or failed; 2 command "
+                    "line, case file or output file; 3 internal error.\n");
+}
+
+/* Numbers must not depend on how many threads a library happens to use. */
+static void one_blas_thread(void)
+{
+    extern void openblas_set_num_threads(int threads);
+
+    openblas_set_num_threads(1);
+}
+
+static int run(int argc, char **argv)
+{
+    if (argc < 2) {
+        help(stderr);
+        return CLI_USAGE;
+    }
+    if (strcmp(argv[1], "--help") == 0) {
+        help(stdout);
+        return CLI_DONE;
+    }
+    if (strcmp(argv[1], "--version") == 0) {
+        printf("twinhorizon %s\n", th_version());
+        return CLI_DONE;
+    }
+    for (int i = 0; i < COMMANDS; i++)
+        if (strcmp(argv[1], command[i].name) == 0)
+            return command[i].run(argc - 2, argv + 2);
+    return cli_usage("there is no command '%s'; twinhorizon --help lists them", argv[1]);
+}
+
+int main(int argc, char **argv)
+{
+    int code;
+
+    gsl_set_error_handler_off();
+    one_blas_thread();
+    code = run(argc, argv);
+    if (fflush(stdout) != 0 || ferror(stdout)) {
+        fprintf(stderr, "twinhorizon: standard output cannot be written (%s)\n", strerror(errno));
+        return code == CLI_INTERNAL ? code : CLI_USAGE;
+    }
+    return code;
+}

@@ -1,0 +1,103 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * Command lines of the commands, and failures as exit codes. */
+#include <stdarg.h>
+#include <string.h>
+
+#include "cli.h"
+
+int cli_usage(const char *format, ...)
+{
+    va_list args;
+
+    fputs("twinhorizon: ", stderr);
+    va_start(args, format);
+    vfprintf(stderr, format, args);
+    va_end(args);
+    fputc('\n', stderr);
+    return CLI_USAGE;
+}
+
+int cli_failed(const th_error *err)
+{
+    fprintf(stderr, "twinhorizon: %s\n", err->text);
+    switch (err->status) {
+    case TH_EINVAL:
+    case TH_ECASE:
+    case TH_EIO:
+        return CLI_USAGE;
+    case TH_ECONVERGE:
+    case TH_EUNDECIDED:
+    case TH_ENONE:
+        return CLI_UNDECIDED;
+    case TH_OK:
+    case TH_ENOMEM:
+    case TH_EBUG:
+        break;
+    }
+    return CLI_INTERNAL;
+}
+
+static void help(const char *command, const char *summary, const cli_option *option, int options)
+{
+    printf("twinhorizon %s CASE [--set SECTION.KEY=VALUE]...", command);
+    for (int i = 0; i < options; i++)
+        printf(" [%s %s]", option[i].name, option[i].value);
+    printf("\n\n%s\n\n", summary);
+    printf("  %-22s %s\n", "--set SECTION.KEY=VALUE", "override or add a key of the case file");
+    for (int i = 0; i < options; i++) {
+        char both[64];
+
+        (void)snprintf(both, sizeof both, "%s %s", option[i].name, option[i].value);
+        printf("  %-23s %s\n", both, option[i].doc);
+    }
+}
+
+static const cli_option *find(const char *name, const cli_option *option, int options)
+{
+    for (int i = 0; i < options; i++)
+        if (strcmp(name, option[i].name) == 0)
+            return &option[i];
+    return NULL;
+}
+
+int cli_read(const char *command, const char *summary, int argc, char **argv,
+             const cli_option *option, int options, cli_arguments *out)
+{
+    memset(out, 0, sizeof *out);
+    for (int i = 0; i < argc; i++) {
+        const bool set = strcmp(argv[i], "--set") == 0;
+        const cli_option *found = find(argv[i], option, options);
+
+        if (strcmp(argv[i], "--help") == 0) {
+            help(command, summary, option, options);
+            return -1;
+        }
+        if (set || found != NULL) {
+            if (i + 1 == argc)
+                return cli_usage("%s: %s wants a value", command, argv[i]);
+            i++;
+            if (set && out->sets == CLI_SET_MAX)
+                return cli_usage("%s: more than %d times --set", command, CLI_SET_MAX);
+            if (set)
+                out->set[out->sets++] = argv[i];
+            else if (*found->place != NULL)
+                return cli_usage("%s: %s is given twice", command, found->name);
+            else
+                *found->place = argv[i];
+        } else if (argv[i][0] == '-' && argv[i][1] != '\0') {
+            return cli_usage("%s: there is no option %s; twinhorizon %s --help lists them", command,
+                             argv[i], command);
+        } else if (out->case_path != NULL) {
+            return cli_usage("%s: one case file is wanted, '%s' and '%s' are given", command,
+                             out->case_path, argv[i]);
+        } else {
+            out->case_path = argv[i];
+        }
+    }
+    if (out->case_path == NULL)
+        return cli_usage("%s: a case file is wanted; twinhorizon %s --help tells more", command,
+                         command);
+    return CLI_DONE;
+}

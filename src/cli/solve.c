@@ -1,0 +1,240 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * twinhorizon solve CASE: verdict, flow and modes as text, modes as a table, the matrix as a file.
+ * A new column of the table is one line of `column` and one put in put_mode. */
+#include <gsl/gsl_math.h>
+#include <string.h>
+
+#include "cli.h"
+
+static const char *verdict_text(th_verdict verdict)
+{
+    switch (verdict) {
+    case TH_VERDICT_STABLE:
+        return "Stable";
+    case TH_VERDICT_UNSTABLE:
+        return "Unstable";
+    case TH_VERDICT_UNDECIDED:
+        return "Undecided";
+    }
+    return "Undecided";
+}
+
+/* The answer in one sentence. */
+static void print_verdict(const cli_view *v, const th_solution *s)
+{
+    char growth[CLI_NUMBER], frequency[CLI_NUMBER];
+    const char *agree = s->index_known ? "matrix and static index agree"
+                                       : "the matrix alone says so, no static index exists";
+
+    printf("%s: ", verdict_text(s->verdict));
+    if (s->verdict == TH_VERDICT_UNDECIDED)
+        printf("%s.\n", s->reason);
+    else if (s->unstable == 0)
+        printf("no growing mode; %s.\n", agree);
+    else
+        printf("%d growing %s; %s.\n", s->unstable, s->unstable == 1 ? "mode" : "modes", agree);
+    if (s->unstable == 0)
+        return;
+    printf("The fastest grows by e in %.5g%s (%s%s) at %s%s.\n", v->time / s->mode[0].omega_im,
+           v->milliseconds,
+           cli_number(s->mode[0].omega_im * v->rate, s->mode[0].omega_error * v->rate, growth),
+           v->per_second,
+           cli_number(s->mode[0].omega_re * v->frequency, s->mode[0].omega_error * v->frequency,
+                      frequency),
+           v->si ? v->hertz : " of frequency");
+}
+
+static void print_modes(const cli_view *v, const th_solution *s)
+{
+    if (s->count == 0) {
+        puts("\nModes       none in the band");
+        return;
+    }
+    printf("\n%4s  %-9s %16s %16s %8s %10s %4s %6s %5s %9s  %s\n", "mode", "label",
+           v->si ? "frequency/Hz" : "frequency", v->si ? "growth*s" : "growth rate",
+           v->si ? "+-*s" : "+-", v->si ? "e-fold/ms" : "e-fold", "norm", "pocket", "nodes",
+           "condition", "confirmed by");
+    for (int i = 0; i < s->count; i++) {
+        const th_mode *m = &s->mode[i];
+        char frequency[CLI_NUMBER], growth[CLI_NUMBER], time[CLI_NUMBER] = "-";
+        char confirmed[TH_CONFIRMED_SIZE];
+
+        if (m->label == TH_LABEL_UNSTABLE)
+            (void)snprintf(time, sizeof time, "%.5g", v->time / m->omega_im);
+        th_confirmed_text(m->confirmed, confirmed);
+        printf("%4d  %-9s %16s %16s %8.1e %10s %4s %5.0f%% %5d %9.3g  %s\n", i + 1,
+               th_label_text(m->label),
+               cli_number(m->omega_re * v->frequency, m->omega_error * v->frequency, frequency),
+               cli_number(m->omega_im * v->rate, m->omega_error * v->rate, growth),
+               m->omega_error * v->rate, time,
+               m->norm < 0   ? "-"
+               : m->norm > 0 ? "+"
+                             : "0",
+               100.0 * m->pocket_share, m->nodes, m->condition, confirmed);
+    }
+}
+
+static void print_notes(const cli_view *v, const th_flow *flow, const th_solution *s)
+{
+    printf("\nListed      modes up to %.5g%s and all that grow; each stands for its mirror image "
+           "-omega* too%s\n",
+           s->omega_top * v->frequency, v->hertz,
+           th_flow_ends(flow).kind == TH_ENDS_OPEN ? "" : ", growing ones for decaying partners");
+    if (s->index_known)
+        printf("Counts      static index %d, matrix %d growing%s\n", s->index, s->unstable,
+               th_flow_ends(flow).kind == TH_ENDS_OPEN ? ""
+                                                       : " and twice the neutral modes of "
+                                                         "negative energy");
+    if (th_flow_ends(flow).kind != TH_ENDS_OPEN)
+        printf("            neutral modes of negative energy: %d\n", s->negative);
+    printf("Matrix      %d unknowns\n", s->unknowns);
+    if (s->zero_modes > 0)
+        printf("Note        %d zero modes of the ring (the free phase and its partner) recognised "
+               "and set aside\n",
+               s->zero_modes);
+    if (th_flow_ends(flow).kind == TH_ENDS_WALLS)
+        puts(
+            "Note        walls reflect sound: growth rates are those of the box, not of open ends");
+    if (s->absorbing)
+        puts("Note        an end is supersonic: it carries an absorbing layer instead of exact "
+             "ends");
+}
+
+static void put_mode(th_table *table, const th_case *c, int number, const th_mode *m)
+{
+    const double rate = th_scale_factor(&c->scale, TH_DIM_RATE);
+    char confirmed[TH_CONFIRMED_SIZE];
+
+    th_confirmed_text(m->confirmed, confirmed);
+    th_table_put_integer(table, number);
+    th_table_put_text(table, th_label_text(m->label));
+    th_table_put_number(table, m->omega_re * rate);
+    th_table_put_number(table, m->omega_im * rate);
+    th_table_put_number(table, m->omega_error * rate);
+    th_table_put_integer(table, m->norm);
+    th_table_put_number(table, m->pocket_share);
+    th_table_put_integer(table, m->nodes);
+    th_table_put_number(table, m->condition);
+    th_table_put_number(table, m->residual);
+    th_table_put_text(table, confirmed);
+}
+
+static th_status write_table(const th_case *c, const th_solution *s, const char *path,
+                             th_error *err)
+{
+    const char *rate = cli_unit(c, TH_DIM_RATE);
+    const th_column column[] = {
+        {.name = "mode", .title = "number, by growth rate", .datatype = "integer"},
+        {.name = "label",
+         .title = "kind of mode",
+         .datatype = "string",
+         .format = "unstable|trapped|stable|undecided"},
+        {.name = "omega_re", .title = "angular frequency", .unit = rate, .datatype = "number"},
+        {.name = "omega_im", .title = "growth rate", .unit = rate, .datatype = "number"},
+        {.name = "omega_error",
+         .title = "error bar of the complex frequency",
+         .unit = rate,
+         .datatype = "number"},
+        {.name = "norm",
+         .title = "sign of the norm",
+         .datatype = "integer",
+         .description = "1 ordinary, -1 negative energy at positive frequency, 0 growing"},
+        {.name = "pocket_share",
+         .title = "share of the pockets in the comoving energy",
+         .datatype = "number"},
+        {.name = "nodes",
+         .title = "zeros of the density fluctuation in the pockets",
+         .datatype = "integer"},
+        {.name = "condition", .title = "condition number of the eigenvalue", .datatype = "number"},
+        {.name = "residual",
+         .title = "residual of the eigenpair over the norm of the matrix",
+         .datatype = "number"},
+        {.name = "confirmed",
+         .title = "computations that agree",
+         .datatype = "string",
+         .description = "names joined by +"},
+    };
+    th_table *table = NULL;
+    th_status st = cli_table(path, column, sizeof column / sizeof column[0],
+                             "modes of one configuration, fastest growing first", c, &table, err);
+
+    for (int i = 0; st == TH_OK && i < s->count; i++) {
+        put_mode(table, c, i + 1, &s->mode[i]);
+        st = th_table_end_row(table, err);
+    }
+    if (st == TH_OK)
+        st = th_table_finish(table, err);
+    th_table_destroy(table);
+    return st;
+}
+
+static th_status write_matrix(const th_case *c, const th_flow *flow, const char *path,
+                              th_error *err)
+{
+    const th_solve_options options = {.accuracy = c->accuracy};
+    cli_file file = {0};
+    th_status st = cli_file_open(path, &file, err);
+
+    if (st == TH_OK)
+        st = th_matrix_write(flow, &options, c->setup.shape->name, file.stream, err);
+    if (st == TH_OK)
+        st = cli_file_finish(&file, err);
+    cli_file_abandon(&file);
+    return st;
+}
+
+static void print_all(const th_case *c, const th_flow *flow, const th_solution *s)
+{
+    const cli_view v = cli_view_of(c);
+
+    print_verdict(&v, s);
+    putchar('\n');
+    cli_print_flow(c, flow, false);
+    print_modes(&v, s);
+    print_notes(&v, flow, s);
+}
+
+int cli_solve(int argc, char **argv)
+{
+    const char *csv = NULL, *matrix = NULL;
+    const cli_option option[] = {
+        {"--csv", "FILE", "table of the modes; - for standard output", &csv},
+        {"--matrix", "FILE.mtx",
+         "the matrix A in Matrix Market form; omega = i eigenvalue, "
+         "reduced units",
+         &matrix},
+    };
+    cli_arguments arguments;
+    th_case *c = NULL;
+    th_flow *flow = NULL;
+    th_solution *s = NULL;
+    th_error err = {0};
+    th_status st;
+    int code =
+        cli_read("solve", "Find the modes of one configuration and say whether it is stable.", argc,
+                 argv, option, 2, &arguments);
+
+    if (code != CLI_DONE)
+        return code < 0 ? CLI_DONE : code;
+    st = th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err);
+    if (st == TH_OK)
+        st = th_flow_build(&c->setup, &flow, &err);
+    if (st == TH_OK && matrix != NULL)
+        st = write_matrix(c, flow, matrix, &err);
+    if (st == TH_OK)
+        st = th_solve(flow, &(th_solve_options){.accuracy = c->accuracy}, &s, &err);
+    if (st == TH_OK && csv != NULL)
+        st = write_table(c, s, csv, &err);
+    if (st != TH_OK)
+        code = cli_failed(&err);
+    else if (csv == NULL || strcmp(csv, "-") != 0)
+        print_all(c, flow, s);
+    if (st == TH_OK && s->verdict == TH_VERDICT_UNDECIDED)
+        code = CLI_UNDECIDED;
+    th_solution_destroy(s);
+    th_flow_destroy(flow);
+    th_case_destroy(c);
+    return code;
+}

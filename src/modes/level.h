@@ -1,0 +1,37 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * The two discretisations that th_solve compares. Private to modes. Depends on mesh, operator. */
+#ifndef TH_MODES_LEVEL_H
+#define TH_MODES_LEVEL_H
+
+#include "mesh/mesh.h"
+#include "operator.h"
+#include "twinhorizon/flow.h"
+
+/* A mesh and its matrix. */
+typedef struct {
+    th_mesh *mesh;
+    th_operator *op;
+} th_level;
+
+/* base: diagonalised densely. check: finer, other elements, other angle; refined by iteration. */
+typedef enum { TH_LEVEL_BASE, TH_LEVEL_CHECK } th_level_kind;
+
+/**
+ * @param[in] accuracy   of th_solve_options
+ * @param[in] omega_top  largest frequency to resolve, > 0
+ * @param[in] omega_low  slowest mode to resolve on open ends, > 0
+ * Errors as th_mesh_create and th_operator_create; on failure `out` is empty.
+ */
+TH_MUST_USE th_status th_level_create(const th_flow *flow, th_level_kind kind, double accuracy,
+                                      double omega_top, double omega_low, th_level *out,
+                                      th_error *err);
+
+/** Release what a level holds. */
+void th_level_clear(th_level *level);
+
+/** Angle of the complex scaling of a level. */
+double th_level_angle(th_level_kind kind);
+
+#endif
