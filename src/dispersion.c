@@ -16,6 +16,25 @@ static int before(double complex a, double complex b)
     return creal(a) > creal(b);
 }
 
+static void sort(double complex k[4])
+{
+    for (int i = 1; i < 4; i++)
+        for (int j = i; j > 0 && before(k[j], k[j - 1]); j--) {
+            const double complex swap = k[j];
+
+            k[j] = k[j - 1];
+            k[j - 1] = swap;
+        }
+}
+
+/* Sum of the sizes of the terms of q(x): what its residual and its rounding are measured by. */
+static double term_sizes(double complex x, double complex a2, double complex a1, double complex a0)
+{
+    const double r = cabs(x);
+
+    return ((r * r + cabs(a2)) * r + cabs(a1)) * r + cabs(a0);
+}
+
 th_status th_dispersion_roots(double complex omega, double v, double c, double complex k[4],
                               th_error *err)
 {
@@ -27,17 +46,20 @@ th_status th_dispersion_roots(double complex omega, double v, double c, double c
     const double complex a1 = 8.0 * omega * v / (size * size * size);
     const double complex a0 = -4.0 * (omega / (size * size)) * (omega / (size * size));
     const int steps = 200; /* cubic convergence: about ten are needed, double roots take fifty */
+    const double settled = 1e-10; /* residual; settled roots have 1e-15, others of order one */
     double complex z[4];
     int moving = 4;
 
-    if (!(size > 0.0) || !isfinite(size) || !(c > 0.0)) {
-        if (size == 0.0 && c > 0.0) { /* omega = 0 at v = c: fourfold root */
-            k[0] = k[1] = k[2] = k[3] = 0.0;
-            return TH_OK;
-        }
+    if (omega == 0.0 && isfinite(size) && c > 0.0) { /* closed form */
+        k[0] = 2.0 * csqrt((v - c) * (v + c));
+        k[1] = k[2] = 0.0;
+        k[3] = -k[0];
+        sort(k);
+        return TH_OK;
+    }
+    if (!isfinite(size + cabs(omega)) || !(c > 0.0)) /* fmax skips a NaN */
         return th_fail(err, TH_ECONVERGE, "wave numbers: omega = %g%+gi, v = %g, c = %g",
                        creal(omega), cimag(omega), v, c);
-    }
     for (int i = 0; i < 4; i++) /* off every axis of symmetry */
         z[i] = 0.45 * cexp(I * (0.4 + M_PI_2 * i)) * (1.0 + 0.07 * i);
     for (int s = 0; s < steps && moving > 0; s++) {
@@ -48,8 +70,7 @@ th_status th_dispersion_roots(double complex omega, double v, double c, double c
             const double complex dq = (4.0 * x * x + 2.0 * a2) * x + a1;
             const double r = cabs(x);
             /* size of the rounding error of q(x): below it the root cannot be improved */
-            const double noise =
-                4.0 * DBL_EPSILON * (((r * r + cabs(a2)) * r + cabs(a1)) * r + cabs(a0));
+            const double noise = 4.0 * DBL_EPSILON * term_sizes(x, a2, a1, a0);
             double complex repel = 0.0, step;
 
             if (cabs(q) <= noise)
@@ -66,17 +87,14 @@ th_status th_dispersion_roots(double complex omega, double v, double c, double c
         }
     }
     for (int i = 0; i < 4; i++) {
-        if (!(isfinite(creal(z[i])) && isfinite(cimag(z[i]))))
+        const double complex q = ((z[i] * z[i] + a2) * z[i] + a1) * z[i] + a0;
+
+        /* |omega| below about 1e-110: a root that nearly vanishes is not reached in `steps` */
+        if (!(cabs(q) <= settled * term_sizes(z[i], a2, a1, a0)))
             return th_fail(err, TH_ECONVERGE, "wave numbers: omega = %g%+gi, v = %g, c = %g",
                            creal(omega), cimag(omega), v, c);
         k[i] = z[i] * size;
     }
-    for (int i = 1; i < 4; i++)
-        for (int j = i; j > 0 && before(k[j], k[j - 1]); j--) {
-            double complex swap = k[j];
-
-            k[j] = k[j - 1];
-            k[j - 1] = swap;
-        }
+    sort(k);
     return TH_OK;
 }

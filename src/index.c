@@ -17,7 +17,7 @@
 #include "twinhorizon/index.h"
 
 #include <float.h>
-#include <math.h>
+#include <gsl/gsl_math.h>
 
 /* Error of the angle allowed to one step, estimated from halving it: a few hundred steps then stay
  * below 1e-12. */
@@ -29,14 +29,13 @@
  * stepped over, and of its piece. */
 #define FEATURE_PART 0.5
 #define PIECE_PART   0.0625
-/* A step below this part of its piece means that the flow is not smooth there. */
-#define SHORTEST_PART 1e-13
+/* Steps for one piece: a few are needed a healing length, so that these cross 4e4 of them, in a
+ * third of a second. A flow that needs more is not smooth. */
+enum { STEPS_MAX = 200000 };
 /* s = n k is kept above this part of n c near v = c, where any scale will do. */
 #define SCALE_FLOOR 1e-6
 /* Roundings of one step: of the exponent, of its exponential and of the new direction. */
 #define STEP_ROUNDINGS 4
-
-static const double pi = 3.141592653589793238462643383280;
 
 /* A solution at one place: (y, z) up to a factor, y >= 0, and phi in [0, pi). */
 typedef struct {
@@ -85,7 +84,7 @@ static void turn(angle *t, exponent omega, double direction)
         odd = -expm1(-2 * mu) / (2 * mu);
         det = fade;
     } else { /* whole half turns are put aside: exp(Omega pi/mu) = -1 */
-        double halves = nearbyint(mu / pi), rest = mu - halves * pi;
+        double halves = nearbyint(mu / M_PI), rest = mu - halves * M_PI;
 
         t->turns += copysign(halves, direction);
         even = cos(rest);
@@ -119,7 +118,7 @@ static double phi(const angle *t)
 /* theta(a) - theta(b), both in the same scale. */
 static double difference(const angle *a, const angle *b)
 {
-    return (a->turns - b->turns) * pi + (phi(a) - phi(b));
+    return (a->turns - b->turns) * M_PI + (phi(a) - phi(b));
 }
 
 static double natural_scale(const th_flow_point *p)
@@ -146,7 +145,7 @@ static void step(const th_flow *flow, int piece, double x, double h, angle *t)
 
     for (int i = 0; i < 3; i++)
         th_flow_eval(flow, piece, x + h * (0.5 + (i - 1) * root / 10), &p[i]);
-    scale = fmax(natural_scale(&p[1]), p[1].n * fmin(p[1].c, 1 / fabs(h)));
+    scale = natural_scale(&p[1]);
     rescale(t, scale);
     for (int i = 0; i < 3; i++)
         r[i] = rate(&p[i], scale, h);
@@ -180,26 +179,26 @@ static th_status cross_smooth(const th_flow *flow, int piece, double from, doubl
 {
     double length = fabs(to - from), direction = to > from ? 1 : -1, x = from, h = length;
 
-    while (x != to) {
+    for (int attempt = 0; x != to; attempt++) {
         double left = fabs(to - x), whole, wrong;
         angle one = *t, two = *t;
 
+        if (attempt == STEPS_MAX)
+            return th_fail(err, TH_ECONVERGE,
+                           "static index: %d steps do not cross the piece from %.9g to %.9g, it is "
+                           "not smooth at x = %.9g",
+                           STEPS_MAX, from, to, x);
         h = fmin(h, step_limit(flow, x, length));
-        whole = h >= left * (1 - SHORTEST_PART) ? to - x : direction * h;
+        whole = h >= left ? to - x : direction * h;
         step(flow, piece, x, whole, &one);
         step(flow, piece, x, whole / 2, &two);
         step(flow, piece, x + whole / 2, whole / 2, &two);
         rescale(&one, two.scale);
         wrong = fabs(difference(&one, &two)) / HALVING_GAIN;
         if (wrong <= STEP_TOLERANCE) {
-            x = fabs(whole) == left ? to : x + whole;
+            x = h >= left ? to : x + whole;
             *t = two;
             t->error += wrong;
-        } else if (!(fabs(whole) > SHORTEST_PART * length)) {
-            return th_fail(err, TH_ECONVERGE,
-                           "static index: steps shrink to %.3g at x = %.9g, the flow is not smooth "
-                           "inside its piece",
-                           fabs(whole), x);
         }
         /* the error of a step grows like its 7th power */
         h = fabs(whole) * fmin(2, fmax(0.2, 0.9 * pow(STEP_TOLERANCE / wrong, 1.0 / 7)));
@@ -307,8 +306,8 @@ th_status th_index_open(const th_flow *flow, th_index *out, th_error *err)
     /* Angles keep their order along x: the left solution has passed the right one j + 1 times, j
      * >= 0, when the difference here exceeds j pi; at j pi they are one solution, K eta = 0. */
     passed = difference(&left, &right);
-    nearest = fmax(0, nearbyint(passed / pi));
-    out->margin = passed - nearest * pi;
+    nearest = fmax(0, nearbyint(passed / M_PI));
+    out->margin = passed - nearest * M_PI;
     out->error = left.error + right.error + DBL_EPSILON * (fabs(left.turns) + fabs(right.turns));
     out->count = (int)nearest + (out->margin > out->error ? 1 : 0);
     if (fabs(out->margin) <= out->error)

@@ -18,6 +18,7 @@
 #include <twinhorizon/case.h>
 
 #include "comma_locale.h"
+#include "refuse.h"
 
 #define STEP                                                                                       \
     "[units]\nsystem = reduced\n[flow]\nshape = step\nspeed = 1\nsound_upstream = 1.5\n"           \
@@ -477,6 +478,34 @@ static void test_arguments(void **state)
     assert_int_equal(th_case_read_text("x", "", NULL, 0, NULL, NULL), TH_EINVAL);
 }
 
+/* Every allocation refused in turn: no memory is the answer, nothing leaks, nothing is handed out.
+ */
+static void test_memory(void **state)
+{
+    static const char *const set[] = {"flow.gap=7 um", "sweep.speed=1 mm/s, 0.9 mm/s, 1.1 mm/s"};
+    long k = 0;
+
+    (void)state;
+    for (;; ++k) {
+        th_case *c = NULL;
+        th_error err = {.status = TH_OK};
+        th_status st;
+        bool enough;
+
+        refuse_from(k);
+        st = th_case_read_text("test.ini", STEP_SI "[sweep]\ngap = 1 um,\n3 um, 2 um\n[plan]\n",
+                               set, 2, &c, &err);
+        enough = refuse_stop();
+        assert_int_equal(st, enough ? TH_OK : TH_ENOMEM);
+        assert_int_equal(err.status, st);
+        assert_true((c != NULL) == enough);
+        th_case_destroy(c);
+        if (enough)
+            break;
+    }
+    assert_true(k > 50); /* about three a key */
+}
+
 /* 64-bit linear congruential generator (constants from memory), upper bits. */
 static unsigned next_random(uint64_t *seed, unsigned below)
 {
@@ -581,7 +610,8 @@ int main(void)
         cmocka_unit_test(test_overrides),    cmocka_unit_test(test_canonical),
         cmocka_unit_test(test_comma_locale), cmocka_unit_test(test_keys),
         cmocka_unit_test(test_files),        cmocka_unit_test(test_names),
-        cmocka_unit_test(test_arguments),    cmocka_unit_test(test_byte_soup),
+        cmocka_unit_test(test_arguments),    cmocka_unit_test(test_memory),
+        cmocka_unit_test(test_byte_soup),
     };
 
     return cmocka_run_group_tests(tests, NULL, NULL);

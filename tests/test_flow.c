@@ -14,6 +14,7 @@
 #include <string.h>
 #include <cmocka.h>
 
+#include "refuse.h"
 #include "twinhorizon/flow.h"
 
 static const double pi = 3.141592653589793238462643383280;
@@ -303,7 +304,8 @@ static void test_well_horizons(void **state)
     const double m = 0.385, gap = 1.7;
     th_flow_setup setup = setup_of("well", open_ends, "mach", m, "gap", gap, NULL);
     th_flow *flow = build(&setup);
-    double s = atanh(sqrt((cbrt(m * m) - m * m) / (1 - m * m))) / sqrt(1 - m * m);
+    double r = cbrt(m * m), q = sqrt(1 - m * m), t = sqrt(r - m * m) / q, s = atanh(t) / q;
+    double kappa = 3 * q * q * q * t * (1 - t * t) / sqrt(r);
     const th_horizon *h;
     int n;
 
@@ -312,6 +314,24 @@ static void test_well_horizons(void **state)
     assert_int_equal(n, 2);
     close_to("black", h[0].x, -gap / 2 - s, 1e-14);
     close_to("white", h[1].x, gap / 2 + s, 1e-14);
+    close_to("kappa", h[0].kappa, kappa, 1e-13);
+    close_to("kappa", h[1].kappa, kappa, 1e-13);
+    th_flow_destroy(flow);
+}
+
+/* A tiny Mach number: near the plateau n/N = m^2 + q^2 tanh^2(q s) is a millionth, and must keep
+ * its digits; the series q s - (q s)^3/3 stands for tanh at q s = 1e-3 (next term 2e-16 of it). */
+static void test_well_slow(void **state)
+{
+    const double m = 1e-3, q2 = (1 - m) * (1 + m), t = 1e-3 - 1e-9 / 3;
+    th_flow_setup setup = setup_of("well", open_ends, "mach", m, "gap", 2.0, NULL);
+    th_flow *flow = build(&setup);
+    th_flow_point p;
+    double want = m * m + q2 * t * t;
+
+    (void)state;
+    th_flow_at(flow, 1 + 1e-3 / sqrt(q2), &p);
+    close_to("n", p.n / want, 1, 1e-12); /* x - 1 has lost three digits */
     th_flow_destroy(flow);
 }
 
@@ -417,6 +437,11 @@ static void test_band_top(void **state)
     /* Near v = c: omega = k (v - c) - k^3/(8 c), largest (2/3) (v - c) k at k^2 = 8 c (v - c)/3, up
      * to relative corrections of order (v - c)/c. */
     close_to("thin band", th_band_top(1 + 1e-8, 1) / (2e-8 / 3 * sqrt(8e-8 / 3)), 1, 1e-7);
+    {
+        double d = (1 + 1e-12) - 1; /* as rounded */
+
+        close_to("thinnest band", th_band_top(1 + d, 1) / (2 * d / 3 * sqrt(8 * d / 3)), 1, 1e-11);
+    }
     close_to("subsonic", th_band_top(1, 1), 0, 0);
     close_to("subsonic", th_band_top(1, 2), 0, 0);
     for (int which = 0; which < 4; which++)
@@ -561,6 +586,14 @@ static void test_ring(void **state)
         close_to("left", edge[0], -25, 0);
         close_to("right", edge[n - 1], 25, 0);
         close_to("flux", th_flow_flux(flow), v, 1e-15);
+        for (int j = 0; j < n - 1; j++) { /* an edge belongs to the piece on its right */
+            th_flow_at(flow, edge[j], &p);
+            th_flow_eval(flow, j, edge[j], &q);
+            assert_memory_equal(&p, &q, sizeof p);
+        }
+        th_flow_at(flow, edge[n - 1], &p);
+        th_flow_eval(flow, 0, edge[0], &q);
+        assert_memory_equal(&p, &q, sizeof p);
         (void)th_flow_horizons(flow, &n);
         assert_int_equal(n, 2);
         for (double x = -24; x < 25; x += 0.77) { /* wrapped both ways */
@@ -573,12 +606,25 @@ static void test_ring(void **state)
         assert_int_equal(th_flow_ends(flow).winding, 8);
         th_flow_destroy(flow);
     }
-    /* Tails that reach the seam but are negligible there: one piece, no uniform rest. */
+    /* Tails that reach the seam but are negligible there: no uniform rest outside. */
     setup[2] = setup_of("sech", ring, "sound_upstream", 1.4, "depth", 1.5, "width", 1.6, NULL);
-    {
-        th_flow *flow = build(&setup[2]);
+    setup[1] =
+        setup_of("tanh", ring, "sound_upstream", 1.4, "sound_pocket", 0.6, "sound_downstream", 1.4,
+                 "width_black", 0.5, "width_white", 0.5, "gap", 34.0, NULL);
+    for (int i = 1; i < 3; i++) {
+        th_flow *flow = build(&setup[i]);
 
-        assert_int_equal(th_flow_pieces(flow), 1);
+        assert_int_equal(th_flow_pieces(flow), i == 1 ? 3 : 1); /* tanh has a plateau */
+        assert_false(th_flow_piece_uniform(flow, 0));
+        th_flow_destroy(flow);
+    }
+    { /* A speed given to ten digits becomes exact. */
+        th_flow *flow;
+
+        setup[0] = setup_of("step", ring, "sound_upstream", 1.4, "sound_pocket", 0.6,
+                            "sound_downstream", 1.4, "gap", 9.0, "speed", v * (1 + 5e-10), NULL);
+        flow = build(&setup[0]);
+        close_to("flux", th_flow_flux(flow), v, 1e-15);
         th_flow_destroy(flow);
     }
 }
@@ -978,6 +1024,19 @@ static void test_ring_seam(void **state)
         close_to("mach", p->mach, s.v / 0.8, 1e-14);
         th_flow_destroy(flow);
     }
+    { /* a narrow dip just beyond the seam, its feature named on this side */
+        f = (th_feature){.x = 10.002, .width = 1e-4};
+        b.x0 = 10.002;
+        b.w = 1e-4;
+        spec = bump_spec(&b);
+        spec.features = 1;
+        spec.feature = &f;
+        assert_int_equal(th_flow_create(&spec, &ring, &flow, NULL), TH_OK);
+        p = th_flow_pockets(flow, &n);
+        assert_int_equal(n, 1);
+        close_to("left", p->left, -9.998 - 1e-4 * sqrt(-log(1.5 - b.v)), 1e-13);
+        th_flow_destroy(flow);
+    }
     b = plain;
     b.period = 20;
     spec = bump_spec(&b);
@@ -995,19 +1054,20 @@ static void test_ring_seam(void **state)
     }
 }
 
-/* v = v0 (1 + a sin(x/w)), n = 1/v, with a = 0.3: the closed integral is v0 times the length when
- * it holds whole periods, however narrow they are. */
+/* v = v0 (1 + 0.3 exp(-((x - 0.777)/w)^2)), n = 1/v: the closed integral over the length l is
+ * v0 (l + 0.3 w sqrt pi), exact to rounding while w is far below l. */
 typedef struct {
     double v0, w;
-} wavy;
+} surge;
 
-static void wavy_eval(const void *ctx, int piece, double x, th_flow_point *p)
+static void surge_eval(const void *ctx, int piece, double x, th_flow_point *p)
 {
-    const wavy *s = ctx;
+    const surge *s = ctx;
+    double y = (x - 0.777) / s->w, e = 0.3 * exp(-y * y);
 
     (void)piece;
-    p->v = s->v0 * (1 + 0.3 * sin(x / s->w));
-    p->dv = s->v0 * 0.3 * cos(x / s->w) / s->w;
+    p->v = s->v0 * (1 + e);
+    p->dv = -2 * y / s->w * s->v0 * e;
     p->n = 1 / p->v;
     p->dn = -p->n * p->dv / p->v;
     p->ddn = 0; /* not looked at here */
@@ -1017,14 +1077,14 @@ static void wavy_eval(const void *ctx, int piece, double x, th_flow_point *p)
 
 static void test_ring_integral(void **state)
 {
-    static const int periods[3] = {1, 7, 40};
+    static const double width[4] = {0.6, 0.1, 0.02, 0.01};
 
     (void)state;
-    for (int i = 0; i < 3; i++) {
-        const double length = 12.5, edge[3] = {-6.25, 1, 6.25};
+    for (int i = 0; i < 4; i++) {
+        const double length = 12.5, edge[3] = {-6.25, 1, 6.25}, w = width[i];
         const th_ends ring = {.kind = TH_ENDS_RING, .circumference = length, .winding = 5};
-        wavy s = {.v0 = 2 * pi * 5 / length, .w = length / (2 * pi * periods[i])};
-        th_flow_spec spec = {.eval = wavy_eval, .ctx = &s, .pieces = 2, .edge = edge};
+        surge s = {.v0 = 2 * pi * 5 / (length + 0.3 * w * sqrt(pi)), .w = w};
+        th_flow_spec spec = {.eval = surge_eval, .ctx = &s, .pieces = 2, .edge = edge};
         th_flow *flow = NULL;
 
         assert_int_equal(th_flow_create(&spec, &ring, &flow, NULL), TH_OK);
@@ -1101,30 +1161,56 @@ static void test_callback_errors(void **state)
     create_fails(&spec, &open_ends, "", "not uniform at its right end");
 }
 
+/* Every allocation refused in turn: the status says so, nothing leaks and nothing is left behind.
+ */
+static void test_memory(void **state)
+{
+    const th_ends ring = {.kind = TH_ENDS_RING, .circumference = 50, .winding = 8};
+    uint64_t seed = 8;
+
+    (void)state;
+    for (int which = 0; which < 5; which++) {
+        th_flow_setup setup = sample_setup(which % 4, &seed);
+
+        if (which == 4)
+            setup = setup_of("tanh", ring, "sound_upstream", 1.4, "sound_pocket", 0.6,
+                             "sound_downstream", 1.4, "width_black", 0.5, "width_white", 0.5, "gap",
+                             9.0, NULL);
+        for (long k = 0;; k++) {
+            th_flow *flow = (th_flow *)&ring;
+            th_error err = {0};
+            th_status st;
+
+            refuse_from(k);
+            st = th_flow_build(&setup, &flow, &err);
+            if (refuse_stop()) {
+                assert_int_equal(st, TH_OK);
+                assert_true(k > 5);
+                th_flow_destroy(flow);
+                break;
+            }
+            assert_int_equal(st, TH_ENOMEM);
+            assert_null(flow);
+            assert_int_equal(err.status, TH_ENOMEM);
+        }
+    }
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(test_tanh_horizons),
-        cmocka_unit_test(test_tanh_formula),
-        cmocka_unit_test(test_tanh_tails),
-        cmocka_unit_test(test_tanh_single_horizon),
-        cmocka_unit_test(test_tanh_plateau),
-        cmocka_unit_test(test_well_potential),
-        cmocka_unit_test(test_well_horizons),
-        cmocka_unit_test(test_derivatives),
-        cmocka_unit_test(test_band_top),
-        cmocka_unit_test(test_scaling),
-        cmocka_unit_test(test_step),
-        cmocka_unit_test(test_ring),
-        cmocka_unit_test(test_walls),
-        cmocka_unit_test(test_setup_errors),
-        cmocka_unit_test(test_table),
-        cmocka_unit_test(test_callback),
-        cmocka_unit_test(test_hidden_dips),
-        cmocka_unit_test(test_sonic_layer),
-        cmocka_unit_test(test_ring_seam),
-        cmocka_unit_test(test_ring_integral),
-        cmocka_unit_test(test_callback_errors),
+        cmocka_unit_test(test_tanh_horizons), cmocka_unit_test(test_tanh_formula),
+        cmocka_unit_test(test_tanh_tails),    cmocka_unit_test(test_tanh_single_horizon),
+        cmocka_unit_test(test_tanh_plateau),  cmocka_unit_test(test_well_potential),
+        cmocka_unit_test(test_well_horizons), cmocka_unit_test(test_well_slow),
+        cmocka_unit_test(test_derivatives),   cmocka_unit_test(test_band_top),
+        cmocka_unit_test(test_scaling),       cmocka_unit_test(test_step),
+        cmocka_unit_test(test_ring),          cmocka_unit_test(test_walls),
+        cmocka_unit_test(test_setup_errors),  cmocka_unit_test(test_table),
+        cmocka_unit_test(test_callback),      cmocka_unit_test(test_hidden_dips),
+        cmocka_unit_test(test_sonic_layer),   cmocka_unit_test(test_ring_seam),
+        cmocka_unit_test(test_ring_integral), cmocka_unit_test(test_callback_errors),
+        cmocka_unit_test(test_memory),
     };
 
     return cmocka_run_group_tests(tests, NULL, NULL);

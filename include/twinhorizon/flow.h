@@ -58,10 +58,10 @@ typedef struct {
     void (*eval)(const void *ctx, int piece, double x, th_flow_point *point);
     void (*release)(void *ctx);
     void *ctx;
-    int pieces;             /* >= 1 */
-    const double *edge;     /* [pieces + 1] ascending, finite */
-    const bool *uniform;    /* [pieces] n, v, c constant on the piece; NULL: none is */
-    int features;           /* >= 0 */
+    int pieces;                /* >= 1 */
+    const double *edge;        /* [pieces + 1] ascending, finite */
+    const bool *uniform;       /* [pieces] n, v, c constant on the piece; NULL: none is */
+    int features;              /* >= 0 */
     const th_feature *feature; /* [features] */
 } th_flow_spec;
 
@@ -75,10 +75,10 @@ typedef enum { TH_HORIZON_BLACK, TH_HORIZON_WHITE } th_horizon_kind;
 typedef struct {
     double x;
     th_horizon_kind kind;
-    bool sharp;       /* v - c jumps: no surface gravity exists, kappa and temperature are 0 */
-    double kappa;     /* surface gravity |d(c - v)/dx|, rate; of the supersonic side at a kink */
+    bool sharp;         /* v - c jumps: no surface gravity exists, kappa and temperature are 0 */
+    double kappa;       /* surface gravity |d(c - v)/dx|, rate; of the supersonic side at a kink */
     double temperature; /* kappa / (2 pi) in reduced energy (k_B T) */
-    double speed;     /* v = c at the horizon; the mean of both sides when sharp */
+    double speed;       /* v = c at the horizon; the mean of both sides when sharp */
 } th_horizon;
 
 /* A supersonic stretch between a black-hole and a white-hole horizon. */
@@ -123,7 +123,7 @@ const double *th_flow_edges(const th_flow *flow, int *count); /* count = pieces 
 bool th_flow_piece_uniform(const th_flow *flow, int piece);
 const th_feature *th_flow_features(const th_flow *flow, int *count);
 th_ends th_flow_ends(const th_flow *flow);
-double th_flow_flux(const th_flow *flow); /* J = n v */
+double th_flow_flux(const th_flow *flow);                            /* J = n v */
 const th_horizon *th_flow_horizons(const th_flow *flow, int *count); /* ascending x */
 const th_pocket *th_flow_pockets(const th_flow *flow, int *count);   /* ascending x */
 double th_flow_sound_max(const th_flow *flow); /* largest c, the scale of speeds */
@@ -155,13 +155,13 @@ enum { TH_SHAPE_KEYS_MAX = 12 };
 typedef struct {
     const char *key;
     th_dimension dimension;
-    double above;        /* the value must be > above ... */
-    double below;        /* ... and < below (HUGE_VAL: no bound) */
-    bool optional;       /* may be absent: `fallback` stands in (in the reduced unit) */
-    double fallback;     /* of optional and si_only keys */
-    bool fixed_by_ring;  /* on a ring the winding fixes it: absent, or it must agree */
-    bool si_only;        /* required in SI, not accepted in reduced cases */
-    const char *doc;     /* one line for manual pages */
+    double above;       /* the value must be > above ... */
+    double below;       /* ... and < below (HUGE_VAL: no bound) */
+    bool optional;      /* may be absent: `fallback` stands in (in the reduced unit) */
+    double fallback;    /* of optional and si_only keys */
+    bool fixed_by_ring; /* on a ring the winding fixes it: absent, or it must agree */
+    bool si_only;       /* required in SI, not accepted in reduced cases */
+    const char *doc;    /* one line for manual pages */
 } th_shape_key;
 
 typedef struct th_shape {
@@ -170,8 +170,8 @@ typedef struct th_shape {
     int keys;
     th_shape_key key[TH_SHAPE_KEYS_MAX];
     /* value[keys] in reduced units, given[keys] says which came from the user. */
-    th_status (*build)(const double *value, const bool *given, double density,
-                       const th_ends *ends, th_flow **out, th_error *err);
+    th_status (*build)(const double *value, const bool *given, double density, const th_ends *ends,
+                       th_flow **out, th_error *err);
 } th_shape;
 
 /** The table of shapes; index 0 <= i < th_shape_count(). */
@@ -184,7 +184,7 @@ typedef struct {
     const th_shape *shape;
     double value[TH_SHAPE_KEYS_MAX]; /* reduced units, order of shape->key */
     bool given[TH_SHAPE_KEYS_MAX];
-    double density;                  /* upstream line density, reduced; 1 when not given */
+    double density; /* upstream line density, reduced; 1 when not given */
     th_ends ends;
 } th_flow_setup;
 

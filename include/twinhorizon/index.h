@@ -40,17 +40,20 @@ typedef struct {
  *                       count is the lower of the two candidates, the other is one more
  * @retval TH_ENONE      an end is not subsonic: K has no lowest eigenvalues to count
  * @retval TH_EINVAL     flow or out is NULL, or the ends are not open
- * @retval TH_ECONVERGE  the steps of the integration shrink to nothing: the flow is not smooth
+ * @retval TH_ECONVERGE  the integration needs more than 200000 steps: the flow is not smooth
  *                       inside a piece. A single jump inside a piece may go unnoticed
  *
  * Notes: (1) The number of modes with Im omega > 0, both signs of Re omega counted, never exceeds
  * count. (2) With two pockets and a wide subsonic stretch between them the margin of the shorter
  * pocket is squeezed exponentially: it is tiny only exponentially near a switch. (3) error is an
  * estimate from halved steps and rounding, carried along; it is not a rigorous enclosure.
- * Reentrant; allocates nothing. Cost: less than a microsecond for uniform pieces, about a tenth of
- * a millisecond for smooth edges. Source: oscillation theorem of Sturm and Liouville; the index
- * bound is the Hamiltonian-Krein index, Physica D 195, 263 (2004). Tests: tests/test_index.c
- * (closed forms of steps, wells and sech pockets; matrix inertia).
+ * Reentrant; allocates nothing. Cost: less than a microsecond for uniform pieces, a few tenths of a
+ * millisecond for smooth edges of about a healing length, growing with their width.
+ *
+ * Source: oscillation theorem of Sturm and Liouville; the index bound is the Hamiltonian-Krein
+ * index, Physica D 195, 263 (2004).
+ *
+ * Tests: tests/test_index.c (closed forms of steps, wells and sech pockets; matrix inertia).
  */
 TH_MUST_USE th_status th_index_open(const th_flow *flow, th_index *out, th_error *err);
 

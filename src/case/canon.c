@@ -3,14 +3,12 @@
  *
  * The canonical text of a case: the same for two files that differ in order, blanks, comments or
  * in what came from overrides. It can be read again and gives the same case.
- * In: checked entries, the shape. Out: th_case.text. Calls keys and status.
+ * In: checked entries, the shape. Out: th_case.text. Calls keys, buffer, status.
  * Symbols: none. To change the order: rank. Proved by tests/test_case.c. */
-#define _POSIX_C_SOURCE 200809L
-
 #include "inside.h"
 
-#include <stdio.h>
-#include <stdlib.h>
+#include "../buffer.h"
+
 #include <string.h>
 
 /* Lines are broken before this column where they can be: half of what the reader takes. */
@@ -33,25 +31,29 @@ static int rank(const th_shape *shape, const th_case_entry *entry)
 }
 
 /* Write one entry; a long list goes on in further lines, broken after commas. */
-static void write_entry(FILE *file, const th_case_entry *entry)
+static void write_entry(th_buffer *text, const th_case_entry *entry)
 {
-    int column = fprintf(file, "%s =", entry->key);
+    size_t line = text->length; /* where the current line begins */
 
+    th_buffer_text(text, entry->key);
+    th_buffer_text(text, " =");
     for (const char *p = entry->value; *p != '\0';) {
-        int length = (int)strcspn(p, ",");
+        size_t length = strcspn(p, ",");
 
         length += p[length] == ',';
-        if (p > entry->value && column + 1 + length > COLUMNS)
-            column = fprintf(file, "\n    %.*s", length, p) - 1;
-        else
-            column += fprintf(file, " %.*s", length, p);
+        if (p > entry->value && text->length - line + 1 + length > COLUMNS) {
+            th_buffer_text(text, "\n   ");
+            line = text->length - 3;
+        }
+        th_buffer_text(text, " ");
+        th_buffer_add(text, p, length);
         p += length;
         p += strspn(p, " ");
     }
-    (void)fputc('\n', file);
+    th_buffer_text(text, "\n");
 }
 
-static void write_section(FILE *file, const th_case_source *source, const th_case *c,
+static void write_section(th_buffer *text, const th_case_source *source, const th_case *c,
                           th_case_section section)
 {
     const th_shape *shape = c->setup.shape;
@@ -61,8 +63,11 @@ static void write_section(FILE *file, const th_case_source *source, const th_cas
 
     for (int i = 0; i < source->entries && !used; ++i)
         used = strcmp(source->entry[i].section, name) == 0;
-    if (used)
-        (void)fprintf(file, "%s[%s]\n", section > 0 ? "\n" : "", name);
+    if (used) {
+        th_buffer_text(text, section > 0 ? "\n[" : "[");
+        th_buffer_text(text, name);
+        th_buffer_text(text, "]\n");
+    }
 
     do { /* all entries of the smallest rank above the last one */
         next = -1;
@@ -79,7 +84,7 @@ static void write_section(FILE *file, const th_case_source *source, const th_cas
             if (strcmp(source->entry[i].section, name) != 0 ||
                 rank(shape, &source->entry[i]) != next)
                 continue;
-            write_entry(file, &source->entry[i]);
+            write_entry(text, &source->entry[i]);
         }
         last = next;
     } while (next >= 0);
@@ -87,15 +92,14 @@ static void write_section(FILE *file, const th_case_source *source, const th_cas
 
 th_status th_case_text_write(const th_case_source *source, th_case *out, th_error *err)
 {
-    size_t size = 0;
-    FILE *file = open_memstream(&out->text, &size);
-    bool failed;
+    th_buffer text = {.data = NULL};
 
-    if (file == NULL)
-        return th_fail(err, TH_ENOMEM, "no memory for the text of the case");
     for (int i = 0; i < TH_SECTIONS; ++i)
-        write_section(file, source, out, (th_case_section)i);
-    failed = ferror(file) != 0;
-    failed = fclose(file) != 0 || failed;
-    return failed ? th_fail(err, TH_ENOMEM, "no memory for the text of the case") : TH_OK;
+        write_section(&text, source, out, (th_case_section)i);
+    if (text.failed) {
+        free(text.data);
+        return th_fail(err, TH_ENOMEM, "no memory for the text of the case");
+    }
+    out->text = text.data;
+    return TH_OK;
 }

@@ -11,7 +11,7 @@
  * Proved by tests/test_flow.c. */
 #include "inside.h"
 
-#include <math.h>
+#include <gsl/gsl_math.h>
 #include <string.h>
 
 #include "../alloc.h"
@@ -27,8 +27,6 @@
  * healing length squared) is below this. A tail that decays like exp(-2 x/w) with w a few healing
  * lengths then misses its limit by about 1e-10, below the nine digits promised elsewhere. */
 #define UNIFORM_TOLERANCE 1e-10
-
-static const double two_pi = 6.283185307179586476925286766559;
 
 th_status th_ends_check(const th_ends *ends, th_error *err)
 {
@@ -164,7 +162,7 @@ static th_status check_ring(const th_flow *flow, const th_flow_sample *sample, i
 {
     double length = flow->edge[flow->pieces] - flow->edge[0];
     double circumference = flow->ends.circumference;
-    double want = two_pi * flow->ends.winding, closed;
+    double want = 2 * M_PI * flow->ends.winding, closed;
 
     if (!(fabs(length - circumference) <= CIRCUMFERENCE_TOLERANCE * circumference))
         return th_fail_key(err, TH_EINVAL, "circumference",
@@ -175,7 +173,7 @@ static th_status check_ring(const th_flow *flow, const th_flow_sample *sample, i
         return th_fail_key(err, TH_EINVAL, "winding",
                            "the closed integral of v is %.12g = 2 pi x %.12g, want 2 pi x "
                            "winding = 2 pi x %d",
-                           closed, closed / two_pi, flow->ends.winding);
+                           closed, closed / (2 * M_PI), flow->ends.winding);
     return TH_OK;
 }
 

@@ -11,7 +11,7 @@
  * Proved by tests/test_flow.c. */
 #include "inside.h"
 
-#include <math.h>
+#include <gsl/gsl_math.h>
 
 #include "../alloc.h"
 
@@ -20,8 +20,6 @@
 #define JUMP_TOLERANCE 1e-12
 /* Halvings of a bracket: leave 1e-21 of the distance of two samples, below the rounding of x. */
 enum { BISECTIONS = 70 };
-
-static const double two_pi = 6.283185307179586476925286766559;
 
 double th_band_top(double v, double c)
 {
@@ -89,7 +87,7 @@ static th_horizon locate(const th_flow *flow, const th_flow_sample *left,
     }
     if (!h.sharp) {
         h.kappa = fabs(p.dc - p.dv);
-        h.temperature = h.kappa / two_pi;
+        h.temperature = h.kappa / (2 * M_PI);
     }
     return h;
 }

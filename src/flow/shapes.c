@@ -10,15 +10,13 @@
  * Proved by tests/test_flow.c. */
 #include "shapes.h"
 
-#include <math.h>
+#include <gsl/gsl_math.h>
 #include <string.h>
 
 #include "inside.h"
 
 /* A speed that the winding of a ring fixes may be given to this relative precision. */
 #define RING_SPEED_TOLERANCE 1e-9
-
-static const double two_pi = 6.283185307179586476925286766559;
 
 static const th_shape *const table[] = {&th_shape_step, &th_shape_tanh, &th_shape_sech,
                                         &th_shape_well};
@@ -71,7 +69,7 @@ static th_status read_value(const th_flow_setup *setup, int i, double *value, th
 {
     const th_shape_key *key = &setup->shape->key[i];
     bool fixed = key->fixed_by_ring && setup->ends.kind == TH_ENDS_RING;
-    double around = fixed ? two_pi * setup->ends.winding / setup->ends.circumference : 0;
+    double around = fixed ? 2 * M_PI * setup->ends.winding / setup->ends.circumference : 0;
 
     if (setup->given[i])
         *value = setup->value[i];
