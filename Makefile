@@ -123,7 +123,7 @@ bench: $(BENCHES)
 
 # The C tests under address, leak and undefined-behaviour checks, in a build of their own.
 sanitize:
-	$(AGAIN) BUILD=$(BUILD)/sanitize run-c-tests CFLAGS="-O1 -g -fno-omit-frame-pointer \
+	$(AGAIN) BUILD=$(BUILD)/sanitize run-c-tests CFLAGS="-O2 -g -fno-omit-frame-pointer \
 	    -fsanitize=address,undefined -fno-sanitize-recover=all"
 
 run-c-tests: tests

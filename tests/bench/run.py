@@ -1,0 +1,216 @@
+#!/usr/bin/python3
+# twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+# SPDX-License-Identifier: GPL-3.0-or-later
+"""How fast: run.py PROGRAM. BENCH_QUICK=1 in the environment: under a minute instead of several.
+
+ 1. Time to 1 % on the growth rate of every growing mode of a typical smooth pocket: PROGRAM against
+    naive.py beside this file, in the same run on the same machine. The true values are PROGRAM's,
+    with its error bars; the last boxes, which share nothing with it, show whether it is right.
+ 2. Cost of one configuration against the length of the pocket.
+ 3. Cost of a sweep against the number of points, and of threads where `sweep` has them.
+
+Nothing here passes or fails by a time. Each time of PROGRAM is that of a whole process, start to
+end, and a median; naive.py is not charged for starting Python. "cpu" is processor time, which a
+busy machine disturbs less than wall time.
+"""
+import csv
+import json
+import math
+import os
+import statistics
+import subprocess
+import sys
+import tempfile
+import time
+
+QUICK = os.environ.get("BENCH_QUICK", "") not in ("", "0")
+PROGRAM = os.path.abspath(sys.argv[1])
+NAIVE = os.path.join(os.path.dirname(os.path.abspath(__file__)), "naive.py")
+CORES = len(os.sched_getaffinity(0))
+
+GOAL = 0.01  # relative error of a growth rate; what a plot of growth rates can show
+REPEATS = 3 if QUICK else 5
+SWEEP_REPEATS = 1 if QUICK else 3
+
+# Dense boxes: as large as a user's patience allows (the cost grows as the cube), at several
+# paddings, since no rule gives the best one.
+DENSE_UNKNOWNS = 2000
+DENSE_PADDINGS = (100,) if QUICK else (40, 100, 200)
+# Sparse boxes, spacing and padding: each has about twice the unknowns of the one before. This order
+# was found by trial to be a good one for naive.py, which a user does not know beforehand.
+BOXES = ((0.05, 200), (0.05, 400), (0.05, 800), (0.05, 1600), (0.025, 1600), (0.025, 3200))
+BOXES = BOXES[:3] if QUICK else BOXES
+# No further box after one that took this long or this much memory.
+LONGEST, LARGEST = 90.0, 1000.0  # seconds, MB
+
+GAPS = (5, 10, 20) if QUICK else (5, 10, 20, 40, 80)
+POINTS = (5, 10) if QUICK else (5, 10, 20, 40)
+THREAD_POINTS = 10 if QUICK else 20
+
+POCKET = """[flow]
+shape = tanh
+speed = 1
+sound_upstream = 1.35
+sound_pocket = 0.55
+sound_downstream = 1.45
+width_black = 0.5
+width_white = 0.5
+gap = 10
+[ends]
+kind = open
+"""
+STEP = """[flow]
+shape = step
+speed = 1
+sound_upstream = 1.5
+sound_pocket = 0.5
+sound_downstream = 1.5
+gap = 10
+[ends]
+kind = open
+"""
+
+
+class Run:
+    """One process: its output, exit code, wall and processor time in s, peak memory in MB."""
+
+    def __init__(self, *command):
+        start = time.perf_counter()
+        with subprocess.Popen(command, stdout=subprocess.PIPE, text=True) as process:
+            self.output = process.stdout.read()
+            _, status, usage = os.wait4(process.pid, 0)
+            process.returncode = self.code = os.waitstatus_to_exitcode(status)
+        self.wall = time.perf_counter() - start
+        self.cpu = usage.ru_utime + usage.ru_stime
+        self.peak = usage.ru_maxrss / 1024
+
+
+def program(*arguments):
+    run = Run(PROGRAM, *arguments)
+    if run.code not in (0, 1):  # 1: finished, but something is undecided
+        sys.exit(f"bench: exit code {run.code} of {PROGRAM} {' '.join(arguments)}")
+    return run
+
+
+def median(runs):
+    """The last run with the medians of all: time is what varies."""
+    last = runs[-1]
+    for name in ("wall", "cpu", "peak"):
+        setattr(last, name, statistics.median(getattr(run, name) for run in runs))
+    return last
+
+
+def solve(case, *arguments, repeats=REPEATS):
+    """Solves a case; .modes: its growing modes as [omega, error bar], fastest first."""
+    run = median([program("solve", case, "--csv", "-", *arguments) for _ in range(repeats)])
+    rows = csv.DictReader(run.output.splitlines())
+    run.modes = [
+        (complex(float(row["omega_re"]), float(row["omega_im"])), float(row["omega_error"]))
+        for row in rows
+        if row["label"] == "unstable"
+    ]
+    return run
+
+
+def naive(*arguments):
+    """naive.py in a process of its own; its wall and processor time without Python's start."""
+    run = Run(sys.executable, NAIVE, *map(str, arguments))
+    if run.code != 0:
+        sys.exit("bench: naive.py failed; it needs python3-numpy and python3-scipy")
+    answer = json.loads(run.output)
+    run.wall, run.cpu = answer["seconds"], answer["processor"]
+    run.unknowns, run.blas = answer["unknowns"], answer["blas"]
+    run.modes = [m and complex(*m) for m in answer["modes"]]
+    return run
+
+
+def errors(modes, truth):
+    """Relative errors of the growth rates; None where a mode is missing. Both fastest first."""
+    modes = modes + [None] * len(truth)
+    return [m and m.imag / z.imag - 1 for m, z in zip(modes, truth)]
+
+
+def within(off):
+    return all(e is not None and abs(e) <= GOAL for e in off)
+
+
+def show(off):
+    return "".join(f"{'missed' if e is None else f'{100 * e:+.2f} %':>11}" for e in off)
+
+
+def exponent(x, y):
+    """p of y = a x^p between the last two."""
+    return math.log(y[-1] / y[-2]) / math.log(x[-1] / x[-2])
+
+
+def ratio(text, cost, own):
+    print(f"  {text:<66}{cost[0] / own.wall:8.2g} x{cost[1] / own.cpu:8.2g} x")
+
+
+def growth_rates(folder):
+    case = os.path.join(folder, "pocket.ini")
+    with open(case, "w", encoding="ascii") as file:
+        file.write(POCKET)
+    print(f"\n1. Growth rates of a smooth pocket, to {100 * GOAL:g} % on every growing mode")
+    print("   tanh, v = 1, c = 1.35/0.55/1.45, widths 0.5, gap 10, hbar = m = 1\n")
+    own = solve(case)
+    truth = [z for z, _ in own.modes]
+    print("mode  frequency     growth rate        error bar / growth rate")
+    for k, (z, bar) in enumerate(own.modes):
+        print(f"{k + 1:4}  {z.real:.8f}    {z.imag:.10f}       {bar / z.imag:.1e}")
+    heads = "".join(f"{f'mode {k + 1}':>11}" for k in range(len(truth)))
+    print(f"\n{'':<31}unknowns   wall s    cpu s     MB  error of the growth rate{'':>3}")
+    print(f"{'':<62}{heads}")
+    bars = "".join(f"{bar / z.imag:11.0e}" for z, bar in own.modes)
+    line = "{:<31}{:>8}{:9.2f}{:9.2f}{:7.0f}{}"
+    print(line.format("twinhorizon solve", "", own.wall, own.cpu, own.peak, bars))
+
+    start = None  # the dense box whose modes are the first guesses of the sparse ones
+    for padding in DENSE_PADDINGS:
+        run = naive("dense", DENSE_UNKNOWNS, padding)
+        off = errors(run.modes, truth)
+        name = f"dense box, padding {padding}"
+        print(line.format(name, run.unknowns, run.wall, run.cpu, run.peak, show(off)))
+        worst = max(math.inf if e is None else abs(e) for e in off)
+        if start is None or (len(run.modes), -worst) > (len(start.modes), -start.worst):
+            start, start.worst = run, worst
+
+    guesses, boxes = start.modes, []
+    for spacing, padding in BOXES:
+        run = naive("sparse", spacing, padding, *guesses)
+        guesses = [m or g for m, g in zip(run.modes, guesses)]
+        run.spacing, run.padding, run.off = spacing, padding, errors(run.modes, truth)
+        boxes.append(run)
+        name = f"sparse box, {spacing} x {padding}"
+        print(line.format(name, run.unknowns, run.wall, run.cpu, run.peak, show(run.off)), flush=True)
+        if run.wall > LONGEST or run.peak > LARGEST:
+            break
+    hit = [k for k, run in enumerate(boxes) if within(run.off)]
+    lucky = hit[0] if hit else None
+    told = None
+    if hit:
+        told = naive("sparse", boxes[lucky].spacing, boxes[lucky].padding, *truth)
+        name = f"  same box {boxes[lucky].spacing} x {boxes[lucky].padding}, told"
+        print(line.format(name, told.unknowns, told.wall, told.cpu, told.peak,
+                          show(errors(told.modes, truth))))
+    print("   dense: best-effort paddings; sparse: spacing x padding, its guesses are the modes of the\n"
+          "   best dense box, then of the box before; told: its guesses are twinhorizon's answers.")
+
+    def total(upto):
+        runs = [start] + boxes[: upto + 1]
+        return sum(r.wall for r in runs), sum(r.cpu for r in runs)
+
+    print(f"\nTime to {100 * GOAL:g} % over that of twinhorizon solve{'':<37}wall       cpu")
+    last = len(boxes) - 1
+    settled = next((k for k in range(1, last + 1) if k - 1 in hit and k in hit), None)
+    if lucky is None:
+        ratio(f"not reached by any box; all of them, more than", total(last), own)
+    else:
+        ratio("the one box that first is within, told the answers", (told.wall, told.cpu), own)
+        one = start.wall + boxes[lucky].wall, start.cpu + boxes[lucky].cpu
+        ratio("the dense box and the one sparse box that first is within", one, own)
+        if settled is None:
+            ratio("until two boxes in a row are within: never here, more than", total(last), own)
+        else:
+            ratio("dense and sparse boxes until two in a row are within", total(settled), own)
+    return own, start, boxes
