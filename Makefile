@@ -5,8 +5,7 @@
 #           for authors: bench lint sanitize valgrind, and .ci/run for all of it
 # Files are found by their place, so a new one needs no line here:
 #   src/*.c src/*/*.c   the library        src/cli/*.c     the program
-#   tests/test_*.c      a cmocka program   tests/bench_*.c a timing program
-#   tests/*.py *.sh     a TAP script, which gets the program's path as $1
+#   tests/test_*.c      a cmocka program   tests/*.py *.sh a TAP script, given the program as $1
 # Settings: CC=gcc|clang  CFLAGS  BUILD=folder  PREFIX  DESTDIR  JOBS=tests at a time  V=1
 
 ifeq ($(origin CC),default)
@@ -49,14 +48,12 @@ SAY        = $(if $(V),,@echo "  $@"; )
 CLI_SOURCES   := $(wildcard src/cli/*.c)
 LIB_SOURCES   := $(filter-out $(CLI_SOURCES),$(wildcard src/*.c src/*/*.c))
 TEST_SOURCES  := $(wildcard tests/test_*.c)
-BENCH_SOURCES := $(wildcard tests/bench_*.c)
 SCRIPTS       := $(wildcard tests/*.py tests/*.sh)
 HEADERS       := $(wildcard include/twinhorizon/*.h)
 
 LIB_OBJECTS := $(LIB_SOURCES:%.c=$(BUILD)/%.o)
 CLI_OBJECTS := $(CLI_SOURCES:%.c=$(BUILD)/%.o)
 TESTS       := $(TEST_SOURCES:%.c=$(BUILD)/%)
-BENCHES     := $(BENCH_SOURCES:%.c=$(BUILD)/%)
 ARCHIVE     := $(BUILD)/libtwinhorizon.a
 SHARED      := $(BUILD)/libtwinhorizon.so
 PROGRAM     := $(BUILD)/twinhorizon
@@ -97,10 +94,7 @@ $(BUILD)/tests/test_%: $(BUILD)/tests/test_%.o $(ARCHIVE)
 	    $(addprefix -Wl$(comma)--wrap=,calloc malloc realloc)) $(LIBS) -lcmocka -o $@
 comma := ,
 
-$(BUILD)/tests/bench_%: $(BUILD)/tests/bench_%.o $(ARCHIVE)
-	$(SAY)$(LINK) $^ $(LIBS) -o $@
-
--include $(patsubst %.c,$(BUILD)/%.d,$(LIB_SOURCES) $(CLI_SOURCES) $(TEST_SOURCES) $(BENCH_SOURCES))
+-include $(patsubst %.c,$(BUILD)/%.d,$(LIB_SOURCES) $(CLI_SOURCES) $(TEST_SOURCES))
 
 # ---- using and testing -----------------------------------------------------------------------
 deps:
@@ -117,9 +111,9 @@ check: deps
 
 tests: $(TESTS)
 
-bench: $(BENCHES)
-	@[ -n "$^" ] || { echo "there is no tests/bench_*.c to run"; exit 1; }
-	@for bench in $^; do echo "== $$bench"; $$bench || exit 1; done
+bench: deps
+	$(AGAIN) all
+	@$(PYTHON) tests/bench/run.py $(PROGRAM)
 
 # The C tests under address, leak and undefined-behaviour checks, in a build of their own.
 sanitize:

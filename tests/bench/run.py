@@ -47,7 +47,9 @@ GAPS = (5, 10, 20) if QUICK else (5, 10, 20, 40, 80)
 POINTS = (5, 10) if QUICK else (5, 10, 20, 40)
 THREAD_POINTS = 10 if QUICK else 20
 
-POCKET = """[flow]
+POCKET = """[units]
+system = reduced
+[flow]
 shape = tanh
 speed = 1
 sound_upstream = 1.35
@@ -59,7 +61,9 @@ gap = 10
 [ends]
 kind = open
 """
-STEP = """[flow]
+STEP = """[units]
+system = reduced
+[flow]
 shape = step
 speed = 1
 sound_upstream = 1.5
@@ -143,8 +147,18 @@ def exponent(x, y):
     return math.log(y[-1] / y[-2]) / math.log(x[-1] / x[-2])
 
 
+def agree(one, other):
+    """Whether a user who does not know the truth would stop here: no mode changed by more than GOAL."""
+    pairs = list(zip(one.modes, other.modes))
+    return all(a and b and abs(a.imag / b.imag - 1) <= GOAL for a, b in pairs)
+
+
+def spent(runs):
+    return sum(run.wall for run in runs), sum(run.cpu for run in runs)
+
+
 def ratio(text, cost, own):
-    print(f"  {text:<66}{cost[0] / own.wall:8.2g} x{cost[1] / own.cpu:8.2g} x")
+    print(f"  {text:<80}{cost[0] / own.wall:8.2g}{cost[1] / own.cpu:10.2g}")
 
 
 def growth_rates(folder):
@@ -185,32 +199,92 @@ def growth_rates(folder):
         print(line.format(name, run.unknowns, run.wall, run.cpu, run.peak, show(run.off)), flush=True)
         if run.wall > LONGEST or run.peak > LARGEST:
             break
-    hit = [k for k, run in enumerate(boxes) if within(run.off)]
-    lucky = hit[0] if hit else None
-    told = None
-    if hit:
-        told = naive("sparse", boxes[lucky].spacing, boxes[lucky].padding, *truth)
-        name = f"  same box {boxes[lucky].spacing} x {boxes[lucky].padding}, told"
-        print(line.format(name, told.unknowns, told.wall, told.cpu, told.peak,
-                          show(errors(told.modes, truth))))
-    print("   dense: best-effort paddings; sparse: spacing x padding, its guesses are the modes of the\n"
-          "   best dense box, then of the box before; told: its guesses are twinhorizon's answers.")
+    print("   dense: several paddings; sparse: spacing x padding, guesses from the best dense box, then\n"
+          "   from the sparse box before. Sizes and paddings chosen for naive.py with hindsight.")
 
-    def total(upto):
-        runs = [start] + boxes[: upto + 1]
-        return sum(r.wall for r in runs), sum(r.cpu for r in runs)
-
-    print(f"\nTime to {100 * GOAL:g} % over that of twinhorizon solve{'':<37}wall       cpu")
-    last = len(boxes) - 1
-    settled = next((k for k in range(1, last + 1) if k - 1 in hit and k in hit), None)
-    if lucky is None:
-        ratio(f"not reached by any box; all of them, more than", total(last), own)
+    print(f"\nTime of naive.py over that of twinhorizon solve{'':<38}wall       cpu")
+    everything = spent([start] + boxes)
+    hit = next((k for k, run in enumerate(boxes) if within(run.off)), None)
+    if hit is None:
+        ratio(f"no box within {100 * GOAL:g} % on all modes; all that were tried: more than", everything, own)
     else:
-        ratio("the one box that first is within, told the answers", (told.wall, told.cpu), own)
-        one = start.wall + boxes[lucky].wall, start.cpu + boxes[lucky].cpu
-        ratio("the dense box and the one sparse box that first is within", one, own)
-        if settled is None:
-            ratio("until two boxes in a row are within: never here, more than", total(last), own)
-        else:
-            ratio("dense and sparse boxes until two in a row are within", total(settled), own)
+        box = boxes[hit]
+        told = naive("sparse", box.spacing, box.padding, *truth)
+        name = f"first box within {100 * GOAL:g} % on all modes, {box.spacing} x {box.padding}"
+        ratio(f"{name}, told the answers as guesses", spent([told]), own)
+        ratio(f"{name}, guesses from the dense box", spent([start, box]), own)
+    pair = next((k for k in range(1, len(boxes)) if agree(boxes[k - 1], boxes[k])), None)
+    if pair is None:
+        ratio("boxes until two in a row agree to 1 % (none did): more than", everything, own)
+    else:
+        worst = max(abs(e) for e in boxes[pair].off)
+        ratio(f"boxes until two in a row agree to 1 % (then {100 * worst:.2g} % off)",
+              spent([start] + boxes[: pair + 1]), own)
     return own, start, boxes
+
+
+def lengths(folder):
+    case = os.path.join(folder, "step.ini")
+    with open(case, "w", encoding="ascii") as file:
+        file.write(STEP)
+    print("\n2. One configuration against the length of the pocket (step, v = 1, c = 1.5/0.5/1.5)\n")
+    print("  gap   growing modes   largest error bar / growth rate   wall s    cpu s     MB")
+    wall, cpu = [], []
+    for gap in GAPS:
+        run = solve(case, "--set", f"flow.gap={gap}")
+        worst = max(bar / z.imag for z, bar in run.modes)
+        note = "" if run.code == 0 else "  undecided"
+        # A mode off the imaginary axis stands for its mirror image too.
+        count = sum(2 if z.real > 0 else 1 for z, _ in run.modes)
+        print(f"{gap:5}{count:16}{worst:34.0e}{run.wall:9.2f}{run.cpu:9.2f}{run.peak:7.0f}{note}")
+        wall.append(run.wall)
+        cpu.append(run.cpu)
+    print(f"  Between the last two the cost grows as gap^{exponent(GAPS, cpu):.1f} (cpu).")
+    return wall
+
+
+def sweep(case, folder, points, *arguments):
+    axis = f"sweep.gap=4 to 12 in {points}"
+    target = os.path.join(folder, "tables")
+    return median([
+        program("sweep", case, "--set", axis, "--out", target, *arguments)
+        for _ in range(SWEEP_REPEATS)
+    ])
+
+
+def sweeps(folder):
+    case = os.path.join(folder, "step.ini")
+    print("\n3. Sweeps: the same step, gap from 4 to 12\n")
+    print(" points   wall s   cpu s   cpu s/point     MB")
+    cpu = []
+    for points in POINTS:
+        run = sweep(case, folder, points)
+        cpu.append(run.cpu)
+        print(f"{points:7}{run.wall:9.2f}{run.cpu:8.2f}{run.cpu / points:14.3f}{run.peak:7.0f}")
+    print(f"  Between the last two the cost grows as points^{exponent(POINTS, cpu):.2f} (cpu).")
+    if "--threads" not in Run(PROGRAM, "sweep", "--help").output:
+        print("  Threads: a sweep uses one; `sweep` has no --threads.")
+        return
+    print(f"\nthreads   wall s   cpu s   speed-up   ({THREAD_POINTS} points)")
+    alone, threads = None, 1
+    while threads <= CORES:
+        run = sweep(case, folder, THREAD_POINTS, "--threads", str(threads))
+        alone = alone or run.wall
+        print(f"{threads:7}{run.wall:9.2f}{run.cpu:8.2f}{alone / run.wall:11.2f}")
+        threads *= 2
+
+
+def main():
+    start = time.perf_counter()
+    load = os.getloadavg()[0]
+    kind = "quick" if QUICK else "full"
+    print(f"twinhorizon bench, {kind}: {CORES} cores, load {load:.1f} at the start"
+          f"{' (busy: trust cpu, not wall)' if load > 0.5 * CORES else ''}, medians of {REPEATS}")
+    with tempfile.TemporaryDirectory() as folder:
+        growth_rates(folder)
+        lengths(folder)
+        sweeps(folder)
+    print(f"\nThe bench took {time.perf_counter() - start:.0f} s.")
+
+
+main()
