@@ -13,6 +13,8 @@
 #include <string.h>
 
 #include "alloc.h"
+#include "buffer.h"
+#include "io_error.h"
 #include "twinhorizon/units.h"
 
 /* Couplings of each node to its neighbours -p..p along the mesh, before scaling. */
@@ -124,7 +126,7 @@ static void write_rows(th_operator *op, const stencil *s, int i, int *used)
     const int p = s->p, width = 2 * p + 1;
     const int at_slot = op->ring ? folded(s->nodes, i) : i;
     const double complex sound = s->sound[i] / s->mass[i], damping = s->damping[i] / s->mass[i];
-    coupling list[2 * TH_GLL_ORDER_MAX + 1];
+    coupling list[2 * TH_GLL_ORDER_MAX + 1] = {{0}};
     int count = 0;
 
     for (int d = -p; d <= p; d++) {
@@ -319,31 +321,56 @@ void th_operator_band(const th_operator *op, double complex lambda, double compl
     }
 }
 
-th_status th_operator_write(const th_operator *op, const char *title, FILE *stream, th_error *err)
+/* "row column value\n" */
+static void write_entry(const th_operator *op, int row, int q, th_buffer *line)
 {
-    int entries = 0, bad = 0;
+    char place[32], number[32];
+
+    (void)snprintf(place, sizeof place, "%d %d ", row + 1, op->column[q] + 1);
+    th_buffer_text(line, place);
+    th_number_write_exact(creal(op->value[q]), number, sizeof number);
+    th_buffer_text(line, number);
+    if (!op->real) {
+        th_number_write_exact(cimag(op->value[q]), number, sizeof number);
+        th_buffer_text(line, " ");
+        th_buffer_text(line, number);
+    }
+    th_buffer_text(line, "\n");
+}
+
+static void write_head(const th_operator *op, const char *title, th_buffer *text)
+{
+    char sizes[64];
+    int entries = 0;
 
     for (int q = 0; q < op->start[op->size]; q++)
         entries += op->value[q] != 0.0;
-    bad |= fprintf(stream,
-                   "%%%%MatrixMarket matrix coordinate %s general\n%% %s\n"
-                   "%% Bogoliubov matrix A of d/dt z = A z; each eigenvalue lambda is a frequency "
-                   "omega = i lambda in reduced units\n%d %d %d\n",
-                   op->real ? "real" : "complex", title, op->size, op->size, entries) < 0;
-    for (int i = 0; i < op->size; i++)
-        for (int q = op->start[i]; q < op->start[i + 1]; q++) {
-            char re[32], im[32];
+    th_buffer_text(text, "%%MatrixMarket matrix coordinate ");
+    th_buffer_text(text, op->real ? "real" : "complex");
+    th_buffer_text(text, " general\n% ");
+    th_buffer_text(text, title);
+    th_buffer_text(text, "\n% Bogoliubov matrix A of d/dt z = A z; each eigenvalue lambda is a "
+                         "frequency omega = i lambda in reduced units\n");
+    (void)snprintf(sizes, sizeof sizes, "%d %d %d\n", op->size, op->size, entries);
+    th_buffer_text(text, sizes);
+}
 
-            if (op->value[q] == 0.0)
-                continue;
-            (void)re, (void)im;
-            bad |=
-                fprintf(stream, "%d %d %.17g", i + 1, op->column[q] + 1, creal(op->value[q])) < 0;
-            if (!op->real)
-                bad |= fprintf(stream, " %.17g", cimag(op->value[q])) < 0;
-            bad |= fputc('\n', stream) == EOF;
-        }
-    if (bad || ferror(stream))
-        return th_fail(err, TH_EIO, "matrix: write failed (%s)", strerror(errno));
-    return TH_OK;
+th_status th_operator_write(const th_operator *op, const char *title, FILE *stream, th_error *err)
+{
+    th_status st = TH_OK;
+    th_buffer text = {0};
+
+    write_head(op, title, &text);
+    for (int i = 0; st == TH_OK && i < op->size; i++) {
+        for (int q = op->start[i]; q < op->start[i + 1]; q++)
+            if (op->value[q] != 0.0)
+                write_entry(op, i, q, &text);
+        if (text.failed)
+            st = th_fail(err, TH_ENOMEM, "matrix: row %d as text", i);
+        else if (fwrite(text.data, 1, text.length, stream) != text.length)
+            st = th_io_fail(err, "matrix", "write", errno);
+        text.length = 0;
+    }
+    free(text.data);
+    return st;
 }

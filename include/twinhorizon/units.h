@@ -98,6 +98,9 @@ TH_MUST_USE th_status th_species_mass(const char *species, double *kilogram, th_
  */
 void th_number_write(double value, char *buffer, size_t size);
 
+/** As th_number_write with the 17 digits that give the same double back. */
+void th_number_write_exact(double value, char *buffer, size_t size);
+
 #ifdef __cplusplus
 }
 #endif

@@ -172,7 +172,7 @@ static th_status resolved(const builder *b, int piece, double left, double lengt
     const th_gll *rule = &b->mesh->rule;
     const th_feature *feature;
     int features;
-    double n[TH_GLL_ORDER_MAX + 1], c2[TH_GLL_ORDER_MAX + 1];
+    double n[TH_GLL_ORDER_MAX + 1], v[TH_GLL_ORDER_MAX + 1], c2[TH_GLL_ORDER_MAX + 1];
     wave_numbers k = {0};
     bool subsonic = true, short_enough;
 
@@ -191,17 +191,20 @@ static th_status resolved(const builder *b, int piece, double left, double lengt
 
         th_flow_eval(b->flow, piece, left + 0.5 * length * (rule->node[j] + 1.0), &at);
         n[j] = at.n;
+        v[j] = at.v;
         c2[j] = at.c * at.c;
         subsonic = subsonic && at.v < at.c;
         st = waves(b, &at, &k, err);
         if (st != TH_OK)
             return st;
     }
-    /* Away from sources an evanescent wave has died by the time elements are long. */
+    /* v = J/n is tested beside n: its poles are those of the equations. Away from sources an
+     * evanescent wave has died by the time elements are long. */
     short_enough =
         k.all * length <= b->reach_kh ||
         (subsonic && length <= clearance(b, left, length) && k.travelling * length <= b->reach_kh);
     *yes = short_enough && series_dead(rule, n, b->options->accuracy) &&
+           series_dead(rule, v, b->options->accuracy) &&
            series_dead(rule, c2, b->options->accuracy);
     return TH_OK;
 }

@@ -195,13 +195,14 @@ th_status th_number_read(const char *text, double *value, th_error *err)
     return TH_OK;
 }
 
-void th_number_write(double value, char *buffer, size_t size)
+/* Write with so many significant digits. */
+static void write_digits(double value, int digits, char *buffer, size_t size)
 {
     char text[64], *out = buffer;
 
     if (size == 0)
         return;
-    (void)snprintf(text, sizeof text, "%.15g", value);
+    (void)snprintf(text, sizeof text, "%.*g", digits, value);
     /* whatever the locale puts for the decimal point, one or more bytes, becomes one '.' */
     for (const char *in = text; *in != '\0' && out + 1 < buffer + size;) {
         if (is_digit(*in) || strchr("+-einfa", *in) != NULL) {
@@ -214,4 +215,14 @@ void th_number_write(double value, char *buffer, size_t size)
         }
     }
     *out = '\0';
+}
+
+void th_number_write(double value, char *buffer, size_t size)
+{
+    write_digits(value, 15, buffer, size);
+}
+
+void th_number_write_exact(double value, char *buffer, size_t size)
+{
+    write_digits(value, 17, buffer, size); /* reads back to the same double */
 }
