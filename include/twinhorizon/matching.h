@@ -41,8 +41,7 @@ typedef enum { TH_MATCHING_USUAL, TH_MATCHING_FINE } th_matching_grain;
  * Tests: tests/test_matching.c.
  */
 TH_MUST_USE th_status th_matching_create(const th_flow *flow, double omega_top,
-                                         th_matching_grain grain, th_matching **out,
-                                         th_error *err);
+                                         th_matching_grain grain, th_matching **out, th_error *err);
 
 /** Release; NULL is allowed. */
 void th_matching_destroy(th_matching *matching);

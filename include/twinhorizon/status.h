@@ -11,7 +11,7 @@ extern "C" {
 #endif
 
 #if defined(__GNUC__)
-#define TH_MUST_USE __attribute__((warn_unused_result))
+#define TH_MUST_USE            __attribute__((warn_unused_result))
 #define TH_PRINTF(text, first) __attribute__((format(printf, text, first)))
 #else
 #define TH_MUST_USE

@@ -16,10 +16,10 @@ extern "C" {
 /* Physical constants, CODATA 2018 (hbar and k_B exact by the definition of the SI, 2019);
  * "CODATA recommended values of the fundamental physical constants: 2018",
  * Rev. Mod. Phys. 93, 025010 (2021). */
-#define TH_PLANCK_HBAR 1.054571817646156391262e-34 /* J s, h / (2 pi) with h = 6.62607015e-34 */
-#define TH_BOLTZMANN 1.380649e-23                  /* J/K, exact */
-#define TH_ATOMIC_MASS_UNIT 1.66053906660e-27      /* kg */
-#define TH_BOHR_RADIUS 5.29177210903e-11           /* m */
+#define TH_PLANCK_HBAR      1.054571817646156391262e-34 /* J s, h / (2 pi) with h = 6.62607015e-34 */
+#define TH_BOLTZMANN        1.380649e-23                /* J/K, exact */
+#define TH_ATOMIC_MASS_UNIT 1.66053906660e-27           /* kg */
+#define TH_BOHR_RADIUS      5.29177210903e-11           /* m */
 
 /* What a number measures. The SI unit in which values are held is in brackets. */
 typedef enum {
@@ -65,7 +65,8 @@ TH_MUST_USE th_status th_scale_si(double mass, double speed, th_scale *out, th_e
  * factor is hbar / (k_B time), the density factor 1 / length, the energy factor mass speed^2). */
 double th_scale_factor(const th_scale *scale, th_dimension dimension);
 
-/** Name of the SI unit of a dimension as written in a CSV's metadata: "m", "m/s", "1/s", "1", ... */
+/** Name of the SI unit of a dimension as written in a CSV's metadata: "m", "m/s", "1/s", "1", ...
+ */
 const char *th_dimension_unit(th_dimension dimension);
 
 /**

@@ -31,8 +31,9 @@ static th_status whole(double turns, const char *what, int *count, th_error *err
     *count = (int)nearest;
     if (fabs(turns - nearest) <= 0.05 && nearest >= 0.0)
         return TH_OK;
-    return th_fail(err, TH_EUNDECIDED, "census: the phase of the matching function adds up to %.3f "
-                                       "%s modes, not to a whole number",
+    return th_fail(err, TH_EUNDECIDED,
+                   "census: the phase of the matching function adds up to %.3f "
+                   "%s modes, not to a whole number",
                    turns, what);
 }
 
@@ -141,8 +142,9 @@ th_status th_census_count(const th_flow *flow, const th_matching *matching, doub
     th_status st;
 
     if (flow == NULL || matching == NULL || out == NULL)
-        return th_fail(err, TH_EINVAL, "census: want a flow, its matching function and a place for "
-                                       "the result");
+        return th_fail(err, TH_EINVAL,
+                       "census: want a flow, its matching function and a place for "
+                       "the result");
     st = th_region_count(flow, matching, omega_top, &region, err);
     *out = region.census;
     th_region_clear(&region);

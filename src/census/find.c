@@ -138,8 +138,7 @@ static th_status count_below(search *s, double x, int *modes, th_error *err)
     th_status st;
 
     for (int i = 0; i < bottom->count; i++) /* nearest samples on the real axis and on the lid */
-        if (under == NULL ||
-            fabs(creal(bottom->node[i].omega) - x) < fabs(creal(under->omega) - x))
+        if (under == NULL || fabs(creal(bottom->node[i].omega) - x) < fabs(creal(under->omega) - x))
             under = &bottom->node[i];
     for (int i = 0; i < lid->count; i++)
         if (cimag(lid->node[i].omega) >= high * (1.0 - 1e-12) &&
@@ -232,8 +231,9 @@ th_status th_census_find(const th_flow *flow, const th_matching *matching, doubl
     th_status st;
 
     if (flow == NULL || matching == NULL || out == NULL || omega == NULL || count == NULL)
-        return th_fail(err, TH_EINVAL, "census: want a flow, its matching function and places for "
-                                       "the results");
+        return th_fail(err, TH_EINVAL,
+                       "census: want a flow, its matching function and places for "
+                       "the results");
     *omega = NULL;
     *count = 0;
     if (th_flow_ends(flow).kind != TH_ENDS_OPEN)

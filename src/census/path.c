@@ -71,8 +71,8 @@ static th_status refine(th_path *p, th_node to, th_error *err)
     const th_node from = p->node[p->count - 1];
     const double complex leg = to.omega - from.omega;
     const double step = carg(to.value * conj(from.value));
-    const double growth = log(cabs(to.value) / cabs(from.value)) +
-                          (double)(to.exponent - from.exponent) * M_LN2;
+    const double growth =
+        log(cabs(to.value) / cabs(from.value)) + (double)(to.exponent - from.exponent) * M_LN2;
     const double complex predicted = 0.5 * (from.rate + to.rate) * leg;
     const double rate = fmax(cabs(from.rate), cabs(to.rate)) * cabs(leg);
     th_node middle = {0};
@@ -85,8 +85,7 @@ static th_status refine(th_path *p, th_node to, th_error *err)
         return push(p, &to, err);
     }
     if (!(cabs(leg) > shortest * fmax(cabs(from.omega), cabs(to.omega))))
-        return th_fail(err, TH_EUNDECIDED,
-                       "census: a mode lies on the contour near omega = %g%+gi",
+        return th_fail(err, TH_EUNDECIDED, "census: a mode lies on the contour near omega = %g%+gi",
                        creal(from.omega), cimag(from.omega));
     st = evaluate(p, from.omega + 0.5 * leg, &middle, err);
     if (st == TH_OK)

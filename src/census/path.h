@@ -21,9 +21,9 @@ typedef struct {
     const th_matching *matching;
     th_node *node; /* [count] */
     int count, room;
-    double worst;      /* largest phase step accepted */
+    double worst; /* largest phase step accepted */
     long evaluations;
-    bool near_modes;   /* modes may lie close to the path: refine on |F'/F| too */
+    bool near_modes; /* modes may lie close to the path: refine on |F'/F| too */
 } th_path;
 
 /** Start a path at a frequency. Errors as th_matching_eval. */

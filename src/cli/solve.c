@@ -8,33 +8,40 @@
 
 #include "cli.h"
 
-static const char *verdict_text(th_verdict verdict)
+/* "matrix, matching function, census and index agree": who stands behind the counts. */
+static void print_agreement(const th_solution *s)
 {
-    switch (verdict) {
-    case TH_VERDICT_STABLE:
-        return "Stable";
-    case TH_VERDICT_UNSTABLE:
-        return "Unstable";
-    case TH_VERDICT_UNDECIDED:
-        return "Undecided";
-    }
-    return "Undecided";
+    const char *name[4] = {"matrix", "matching function"};
+    int count = 2;
+
+    if (s->census_known)
+        name[count++] = "census";
+    if (s->index_known)
+        name[count++] = "index";
+    for (int i = 0; i < count; i++)
+        printf("%s%s", i == 0 ? "" : i + 1 < count ? ", " : " and ", name[i]);
+    fputs(" agree", stdout);
+    if (!s->index_known)
+        fputs(" (a supersonic end has no static index)", stdout);
 }
 
-/* The answer in one sentence. */
+/* The answer in one sentence, then the fastest mode. */
 static void print_verdict(const cli_view *v, const th_solution *s)
 {
     char growth[CLI_NUMBER], frequency[CLI_NUMBER];
-    const char *agree = s->index_known ? "matrix and static index agree"
-                                       : "the matrix alone says so, no static index exists";
 
-    printf("%s: ", verdict_text(s->verdict));
-    if (s->verdict == TH_VERDICT_UNDECIDED)
-        printf("%s.\n", s->reason);
-    else if (s->unstable == 0)
-        printf("no growing mode; %s.\n", agree);
-    else
-        printf("%d growing %s; %s.\n", s->unstable, s->unstable == 1 ? "mode" : "modes", agree);
+    if (s->verdict == TH_VERDICT_UNDECIDED) {
+        printf("Undecided: %s.\n", s->reason);
+    } else {
+        if (s->unstable == 0)
+            fputs("Stable: no unstable mode; ", stdout);
+        else
+            printf("%d unstable %s; ", s->unstable, s->unstable == 1 ? "mode" : "modes");
+        print_agreement(s);
+        if (s->unstable > 0)
+            printf("; largest disagreement %.0e%s", s->disagreement * v->rate, v->per_second);
+        puts(".");
+    }
     if (s->unstable == 0)
         return;
     printf("The fastest grows by e in %.5g%s (%s%s) at %s%s.\n", v->time / s->mode[0].omega_im,
@@ -78,18 +85,29 @@ static void print_modes(const cli_view *v, const th_solution *s)
 
 static void print_notes(const cli_view *v, const th_flow *flow, const th_solution *s)
 {
-    printf("\nListed      modes up to %.5g%s and all that grow; each stands for its mirror image "
-           "-omega* too%s\n",
-           s->omega_top * v->frequency, v->hertz,
-           th_flow_ends(flow).kind == TH_ENDS_OPEN ? "" : ", growing ones for decaying partners");
+    const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
+
+    printf("\nCounts      growing modes: %d found", s->unstable);
+    if (s->census_known)
+        printf(", %d by census", s->census);
     if (s->index_known)
-        printf("Counts      static index %d, matrix %d growing%s\n", s->index, s->unstable,
-               th_flow_ends(flow).kind == TH_ENDS_OPEN ? ""
-                                                       : " and twice the neutral modes of "
-                                                         "negative energy");
-    if (th_flow_ends(flow).kind != TH_ENDS_OPEN)
-        printf("            neutral modes of negative energy: %d\n", s->negative);
-    printf("Matrix      %d unknowns\n", s->unknowns);
+        printf(open ? ", %d by static index" : "; static index %d", s->index);
+    if (!open)
+        printf(" = growing + 2 x %d neutral of negative energy", s->negative);
+    printf("; both signs of the frequency counted\n");
+    if (s->census_known)
+        printf(
+            "Certified   frequency up to %.4g%s, growth rate up to %.4g%s; worst phase step %.2f\n",
+            s->census_re_max * v->frequency, v->hertz, s->census_im_max * v->rate, v->per_second,
+            s->census_step);
+    printf("Listed      %s%.5g%s; each stands for its mirror image -omega* too%s\n",
+           s->dense ? "modes up to frequency " : "growing modes only; band up to frequency ",
+           s->omega_top * v->frequency, v->hertz,
+           open ? "" : ", growing ones for decaying partners");
+    printf("Matrix      %d unknowns%s\n", s->unknowns,
+           s->dense ? ""
+                    : ": too many for all eigenvalues, so the census found the modes and the "
+                      "matrix confirmed each");
     if (s->zero_modes > 0)
         printf("Note        %d zero modes of the ring (the free phase and its partner) recognised "
                "and set aside\n",
@@ -98,8 +116,7 @@ static void print_notes(const cli_view *v, const th_flow *flow, const th_solutio
         puts(
             "Note        walls reflect sound: growth rates are those of the box, not of open ends");
     if (s->absorbing)
-        puts("Note        an end is supersonic: it carries an absorbing layer instead of exact "
-             "ends");
+        puts("Note        an end is supersonic: in the matrix it carries an absorbing layer");
 }
 
 static void put_mode(th_table *table, const th_case *c, int number, const th_mode *m)

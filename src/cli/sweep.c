@@ -67,7 +67,7 @@ static th_status start_tables(state *w, const char *folder, th_error *err)
         {.name = "census",
          .title = "growing modes counted by the argument principle",
          .datatype = "integer",
-         .description = "empty: not computed"},
+         .description = "empty when it could not decide"},
         {.name = "unstable",
          .title = "growing modes found, both signs of the frequency",
          .datatype = "integer"},
@@ -165,7 +165,10 @@ static th_status put_point(state *w, const th_sweep_point *point, th_error *err)
             th_table_put_integer(w->points, s->index);
         else
             th_table_put_nothing(w->points);
-        th_table_put_nothing(w->points);
+        if (s->census_known)
+            th_table_put_integer(w->points, s->census);
+        else
+            th_table_put_nothing(w->points);
         th_table_put_integer(w->points, s->unstable);
         th_table_put_number(w->points, grows ? s->mode[0].omega_im * rate : 0.0);
         if (grows)

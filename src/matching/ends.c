@@ -52,13 +52,15 @@ static th_status split_above(const th_end *e, double complex omega, double compl
             kept[in++] = k[i];
     }
     if (st == TH_OK && (out != 2 || in != 4))
-        st = th_fail(err, TH_ECONVERGE, "matching: the outgoing waves at omega = %g%+gi (scaled) "
-                                        "cannot be told from the others",
+        st = th_fail(err, TH_ECONVERGE,
+                     "matching: the outgoing waves at omega = %g%+gi (scaled) "
+                     "cannot be told from the others",
                      creal(omega), cimag(omega));
     return st;
 }
 
-/* Carry the split from omega to a near frequency; *ok false when the step is too long to be sure. */
+/* Carry the split from omega to a near frequency; *ok false when the step is too long to be sure.
+ */
 static th_status follow(const th_end *e, double complex omega, double complex next,
                         double complex kept[4], bool *ok, th_error *err)
 {
@@ -107,8 +109,8 @@ static th_status split(const th_end *e, double complex omega, double complex kep
         const double next = fmax(to, at - step);
         bool ok;
 
-        st = follow(e, cabs(omega) * cexp(I * at), next == to ? omega : cabs(omega) * cexp(I * next),
-                    kept, &ok, err);
+        st = follow(e, cabs(omega) * cexp(I * at),
+                    next == to ? omega : cabs(omega) * cexp(I * next), kept, &ok, err);
         if (st == TH_OK && ok)
             at = next;
         step = ok ? fmin(0.3, 2.0 * step) : 0.5 * step;

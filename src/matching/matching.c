@@ -251,8 +251,9 @@ th_status th_matching_eval(const th_matching *matching, double omega_re, double 
 th_status th_matching_polish(const th_matching *matching, double reach, double *omega_re,
                              double *omega_im, double *last, th_error *err)
 {
-    const int steps = 40;        /* quadratic: four are the rule; near double roots linear */
+    const int steps = 40;         /* quadratic: four are the rule; near double roots linear */
     const double settled = 1e-15; /* relative step at which rounding has the last word */
+    const double stalled = 1e-3;  /* the same for slow modes, whose rounding is relative to c^2 */
     const double complex guess = *omega_re + I * *omega_im;
     double complex omega = guess;
     double before = HUGE_VAL;
@@ -272,7 +273,8 @@ th_status th_matching_polish(const th_matching *matching, double reach, double *
         if (!(cabs(omega - guess) <= reach) || omega == 0.0)
             break;
         /* done when the step is rounding, or is small and has stopped shrinking */
-        if (*last <= settled * cabs(omega) || (*last < 1e-9 * cabs(omega) && *last >= 0.5 * before)) {
+        if (*last <= settled * cabs(omega) ||
+            (*last < stalled * cabs(omega) && *last >= 0.7 * before)) {
             *omega_re = creal(omega);
             *omega_im = cimag(omega);
             return TH_OK;

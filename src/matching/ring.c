@@ -105,8 +105,7 @@ th_status th_ring_determinant(const th_steps *steps, double complex omega, bool 
     for (int i = 0; i < steps->count; i++) {
         th_fundamental f;
         th_matrix4 t, dt;
-        th_status st =
-            th_transfer_expand(&steps->step[i], steps->flux, omega, slope, &f, err);
+        th_status st = th_transfer_expand(&steps->step[i], steps->flux, omega, slope, &f, err);
 
         if (st != TH_OK)
             return st;

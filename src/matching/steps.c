@@ -27,8 +27,8 @@ typedef struct {
     const th_flow *flow;
     th_steps *out;
     double omega_top, kh;
-    double node[DEGREE + 1];               /* Chebyshev points */
-    double wave[DEGREE + 1][DEGREE + 1];   /* wave[j][q] = T_j at node q */
+    double node[DEGREE + 1];              /* Chebyshev points */
+    double wave[DEGREE + 1][DEGREE + 1];  /* wave[j][q] = T_j at node q */
     double power[DEGREE + 1][DEGREE + 1]; /* power[j][i]: coefficient of t^i in T_j */
 } cutter;
 
@@ -45,8 +45,7 @@ static void prepare(cutter *c)
     c->power[1][1] = 1.0;
     for (int j = 2; j <= DEGREE; j++)
         for (int i = 0; i <= j; i++)
-            c->power[j][i] =
-                (i > 0 ? 2.0 * c->power[j - 1][i - 1] : 0.0) - c->power[j - 2][i];
+            c->power[j][i] = (i > 0 ? 2.0 * c->power[j - 1][i - 1] : 0.0) - c->power[j - 2][i];
 }
 
 /* Values at the nodes -> powers of t; number of terms, 0 when the series has not died. */

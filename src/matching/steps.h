@@ -18,21 +18,21 @@ enum { TH_STEP_TERMS = 32 };
 
 /* Coefficients on a step, powers of t in [-1, 1], x = middle + half t. */
 typedef struct {
-    double half;                       /* half length, > 0 */
-    int repeat;                        /* so many equal steps follow each other (uniform flow) */
+    double half; /* half length, > 0 */
+    int repeat;  /* so many equal steps follow each other (uniform flow) */
     int inverse_terms, density_terms, pressure_terms;
-    double inverse[TH_STEP_TERMS];     /* 1/n */
-    double density[TH_STEP_TERMS];     /* n */
-    double pressure[TH_STEP_TERMS];    /* n c^2 */
+    double inverse[TH_STEP_TERMS];  /* 1/n */
+    double density[TH_STEP_TERMS];  /* n */
+    double pressure[TH_STEP_TERMS]; /* n c^2 */
 } th_step;
 
 /* Steps from left to right. */
 typedef struct {
     th_step *step; /* [count] */
     int count;
-    int match;     /* solutions from the left meet those from the right before step[match] */
+    int match; /* solutions from the left meet those from the right before step[match] */
     int room;
-    double flux;   /* J */
+    double flux;             /* J */
     double speed0, density0; /* scale: largest sound speed, density at edge[0] */
 } th_steps;
 

@@ -116,9 +116,10 @@ th_status th_transfer_expand(const th_step *step, double flux, double complex om
         m++;
     }
     if (m == TERMS || !isfinite(largest))
-        return th_fail(err, TH_ECONVERGE,
-                       "matching: the series of a step does not converge at omega = %g%+gi (scaled)",
-                       creal(omega), cimag(omega));
+        return th_fail(
+            err, TH_ECONVERGE,
+            "matching: the series of a step does not converge at omega = %g%+gi (scaled)",
+            creal(omega), cimag(omega));
     sum_up(&value, m, out->left, out->right);
     if (slope)
         sum_up(&change, m, out->left_slope, out->right_slope);

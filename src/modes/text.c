@@ -25,7 +25,10 @@ const char *th_label_text(th_label label)
 static const struct {
     unsigned bit;
     const char *name;
-} confirmer[] = {{TH_BY_MATRIX, "matrix"}, {TH_BY_INDEX, "index"}};
+} confirmer[] = {{TH_BY_MATRIX, "matrix"},
+                 {TH_BY_MATCHING, "matching"},
+                 {TH_BY_CENSUS, "census"},
+                 {TH_BY_INDEX, "index"}};
 
 void th_confirmed_text(unsigned confirmed, char *buffer)
 {

@@ -49,7 +49,8 @@ UPSTREAM, POCKET, DOWNSTREAM = 1.35, 0.55, 1.45
 def sound(x):
     """c(x); each edge is shifted so that c = v at -GAP/2 and at +GAP/2."""
     shift = [
-        WIDTH * numpy.arctanh((c + POCKET - 2 * SPEED) / (c - POCKET)) for c in (UPSTREAM, DOWNSTREAM)
+        WIDTH * numpy.arctanh((c + POCKET - 2 * SPEED) / (c - POCKET))
+        for c in (UPSTREAM, DOWNSTREAM)
     ]
     left = 1 - numpy.tanh((x + GAP / 2 + shift[0]) / WIDTH)
     right = 1 + numpy.tanh((x - GAP / 2 - shift[1]) / WIDTH)
