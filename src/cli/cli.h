@@ -18,12 +18,12 @@ enum { CLI_DONE = 0, CLI_UNDECIDED = 1, CLI_USAGE = 2, CLI_INTERNAL = 3 };
 
 /* ---- options.c ------------------------------------------------------------------------------ */
 
-/* An option of a command: "--name VALUE". */
+/* An option of a command: "--name VALUE", or "--name" alone when value is NULL. */
 typedef struct {
     const char *name;  /* with its dashes */
     const char *value; /* word for the value in the help */
     const char *doc;
-    const char **place; /* where the value goes */
+    const char **place; /* where the value, or the name alone, goes */
 } cli_option;
 
 enum { CLI_SET_MAX = 64 };
@@ -85,6 +85,11 @@ const char *cli_unit(const th_case *c, th_dimension dimension);
 
 /* Flow, horizons and pockets in a few lines. */
 void cli_print_flow(const th_case *c, const th_flow *flow, bool details);
+
+/* ---- sensitivity.c -------------------------------------------------------------------------- */
+
+/* Print d omega / d key of every growing mode. */
+th_status cli_print_sensitivity(const th_case *c, const th_solution *s, th_error *err) TH_MUST_USE;
 
 /* ---- commands, one file each ---------------------------------------------------------------- */
 

@@ -43,13 +43,15 @@ static void help(const char *command, const char *summary, const cli_option *opt
 {
     printf("twinhorizon %s CASE [--set SECTION.KEY=VALUE]...", command);
     for (int i = 0; i < options; i++)
-        printf(" [%s %s]", option[i].name, option[i].value);
+        printf(" [%s%s%s]", option[i].name, option[i].value != NULL ? " " : "",
+               option[i].value != NULL ? option[i].value : "");
     printf("\n\n%s\n\n", summary);
     printf("  %-22s %s\n", "--set SECTION.KEY=VALUE", "override or add a key of the case file");
     for (int i = 0; i < options; i++) {
         char both[64];
 
-        (void)snprintf(both, sizeof both, "%s %s", option[i].name, option[i].value);
+        (void)snprintf(both, sizeof both, "%s %s", option[i].name,
+                       option[i].value != NULL ? option[i].value : "");
         printf("  %-23s %s\n", both, option[i].doc);
     }
 }
@@ -69,15 +71,16 @@ int cli_read(const char *command, const char *summary, int argc, char **argv,
     for (int i = 0; i < argc; i++) {
         const bool set = strcmp(argv[i], "--set") == 0;
         const cli_option *found = find(argv[i], option, options);
+        const bool alone = found != NULL && found->value == NULL;
 
         if (strcmp(argv[i], "--help") == 0) {
             help(command, summary, option, options);
             return -1;
         }
         if (set || found != NULL) {
-            if (i + 1 == argc)
+            if (!alone && i + 1 == argc)
                 return cli_usage("%s: %s wants a value", command, argv[i]);
-            i++;
+            i += !alone;
             if (set && out->sets == CLI_SET_MAX)
                 return cli_usage("%s: more than %d times --set", command, CLI_SET_MAX);
             if (set)

@@ -215,13 +215,14 @@ static void print_all(const th_case *c, const th_flow *flow, const th_solution *
 
 int cli_solve(int argc, char **argv)
 {
-    const char *csv = NULL, *matrix = NULL;
+    const char *csv = NULL, *matrix = NULL, *sensitivity = NULL;
     const cli_option option[] = {
         {"--csv", "FILE", "table of the modes; - for standard output", &csv},
         {"--matrix", "FILE.mtx",
          "the matrix A in Matrix Market form; omega = i eigenvalue, "
          "reduced units",
          &matrix},
+        {"--sensitivity", NULL, "also print d omega/d key of every growing mode", &sensitivity},
     };
     cli_arguments arguments;
     th_case *c = NULL;
@@ -229,12 +230,16 @@ int cli_solve(int argc, char **argv)
     th_solution *s = NULL;
     th_error err = {0};
     th_status st;
+    bool only_table;
     int code =
         cli_read("solve", "Find the modes of one configuration and say whether it is stable.", argc,
-                 argv, option, 2, &arguments);
+                 argv, option, 3, &arguments);
 
     if (code != CLI_DONE)
         return code < 0 ? CLI_DONE : code;
+    only_table = csv != NULL && strcmp(csv, "-") == 0;
+    if (only_table && sensitivity != NULL)
+        return cli_usage("solve: --csv - leaves no room on standard output for --sensitivity");
     st = th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err);
     if (st == TH_OK)
         st = th_flow_build(&c->setup, &flow, &err);
@@ -244,11 +249,13 @@ int cli_solve(int argc, char **argv)
         st = th_solve(flow, &(th_solve_options){.accuracy = c->accuracy}, &s, &err);
     if (st == TH_OK && csv != NULL)
         st = write_table(c, s, csv, &err);
+    if (st == TH_OK && !only_table)
+        print_all(c, flow, s);
+    if (st == TH_OK && sensitivity != NULL)
+        st = cli_print_sensitivity(c, s, &err);
     if (st != TH_OK)
         code = cli_failed(&err);
-    else if (csv == NULL || strcmp(csv, "-") != 0)
-        print_all(c, flow, s);
-    if (st == TH_OK && s->verdict == TH_VERDICT_UNDECIDED)
+    else if (s->verdict == TH_VERDICT_UNDECIDED)
         code = CLI_UNDECIDED;
     th_solution_destroy(s);
     th_flow_destroy(flow);

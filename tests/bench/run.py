@@ -209,9 +209,11 @@ def growth_rates(folder, summary):
         print(line.format(run.name, run.unknowns, run.wall, run.cpu, run.peak, show(run.off)))
         if run.wall > LONGEST or run.peak > LARGEST:
             break
-    print("   dense: several paddings; sparse: spacing x padding, guesses from the best dense box,\n"
-          "   then from the sparse box before. Sizes and paddings: chosen for naive.py, in hindsight.\n"
-          f"   scipy with {' '.join(start.blas) or 'unknown BLAS'}, its own number of threads.")
+    print(
+        "   dense: several paddings; sparse: spacing x padding, guesses from the best dense box,\n"
+        "   then from the sparse box before. Sizes and paddings chosen in hindsight.\n"
+        f"   scipy with {' '.join(start.blas) or 'unknown BLAS'}, its own number of threads."
+    )
 
     print(f"\n{'Time of naive.py over that of twinhorizon solve':<82}    wall       cpu")
     tried = [start] + boxes

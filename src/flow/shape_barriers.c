@@ -1,0 +1,132 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * Shape barriers: the exact flow through two repulsive delta barriers gap apart. Goes in: values of
+ * the keys. Comes out: a flow of three pieces. May call: flow, shapes (rules), status.
+ *
+ * In units of the upstream state (n = c = 1, v = m): the potential is 0 on both sides of a barrier,
+ * so that the density n_d between them has the same flux and m^2/2 + 1 = m^2/(2 n^2) + n as the
+ * upstream one. Besides n = 1 this has the root n_d = (m^2/4)(1 + q), q = sqrt(1 + 8/m^2), and
+ * m^2 < n_d < m^{2/3}: supersonic for every m < 1. Outside, a grey soliton that has been cut off:
+ * n = m^2 + (1 - m^2) T^2, T = tanh(sqrt(1 - m^2) s + a), s the distance from the barrier. n = n_d
+ * at s = 0 asks for T0^2 = 2/(3 + q). T0 = tanh a > 0 lets n rise monotonically to 1: the kink of
+ * sqrt n points down and the barrier is repulsive, Z delta(x) with
+ *   2 Z = jump of (sqrt n)'/sqrt n, so that Z = (1 - m^2)^{3/2} T0 (1 - T0^2)/(2 n_d).
+ * (T0 < 0 would make a dip before the kink and an attractive delta.) th_flow_potential gives the
+ * regular part only, which is 0 everywhere. The horizons lie outside the barriers, n = m^{2/3}.
+ *
+ * Fluctuations need no condition at the barriers beyond the usual one, that eta, n eta', phi and
+ * n phi' are continuous: psi = sqrt(n) e^{i theta} (1 + eta/2 + i phi) has the kink in sqrt(n), the
+ * delta cancels with it, and neither n' nor V is left in the equations.
+ *
+ * Symbols: m Mach number, N and c_u upstream density and sound speed, kappa = sqrt(1 - m^2) c_u
+ * inverse soliton width, a = atanh(T0), T = tanh(kappa s + a), S = sech^2(kappa s + a).
+ * To add a shape see shapes.c. Proved by tests/test_barriers.c. */
+#include "shapes.h"
+
+#include <math.h>
+
+#include "../alloc.h"
+
+enum { SOUND_UPSTREAM, MACH, GAP, KEYS };
+
+typedef struct {
+    double density, c_u, m;
+    double half;   /* of the distance between the barriers */
+    double rise;   /* 1 - m^2 */
+    double kappa;  /* inverse width of the soliton */
+    double cut;    /* e^{-2 a} = (1 - T0)/(1 + T0) */
+    double inside; /* n_d, in units of the upstream density */
+} barriers;
+
+static void eval(const void *ctx, int piece, double x, th_flow_point *point)
+{
+    const barriers *b = ctx;
+    double side = piece < 1 ? -1 : 1; /* of the pocket */
+    double s = fmax(0, side * x - b->half);
+    double e = b->cut * exp(-2 * b->kappa * s), t = (1 - e) / (1 + e);
+    double sech2 = 4 * e / ((1 + e) * (1 + e));
+    double r = piece == 1 ? b->inside : 1 - b->rise * sech2; /* n/N */
+
+    *point = (th_flow_point){.n = b->density * r, .v = b->m * b->c_u / r, .c = b->c_u * sqrt(r)};
+    if (piece == 1)
+        return;
+    /* T' = kappa S, S' = -2 kappa S T */
+    point->dn = side * b->density * b->rise * 2 * b->kappa * t * sech2;
+    point->ddn = b->density * b->rise * 2 * b->kappa * b->kappa * sech2 * (sech2 - 2 * t * t);
+    point->dv = -point->v * point->dn / point->n;
+    point->dc = point->c * point->dn / (2 * point->n);
+}
+
+static th_status build(const double *value, const bool *given, double density, const th_ends *ends,
+                       th_flow **out, th_error *err)
+{
+    static const bool uniform[3] = {false, true, false};
+    double m = value[MACH], c_u = value[SOUND_UPSTREAM], rise = (1 - m) * (1 + m);
+    double kappa = sqrt(rise) * c_u, half = value[GAP] / 2;
+    double q = sqrt(1 + 8 / (m * m)), t0 = sqrt(2 / (3 + q)), reach, width;
+    double edge[4];
+    th_feature feature[2];
+    th_flow_spec spec = {.eval = eval,
+                         .release = free,
+                         .pieces = 3,
+                         .edge = edge,
+                         .uniform = uniform,
+                         .features = 2,
+                         .feature = feature};
+    barriers *b = NULL;
+    th_status st;
+
+    (void)given;
+    if (ends->kind == TH_ENDS_RING)
+        return th_fail_key(err, TH_EINVAL, "kind",
+                           "shape barriers cannot close on a ring: its solitons need open ends or "
+                           "walls");
+    b = th_alloc(1, sizeof *b);
+    if (b == NULL)
+        return th_fail(err, TH_ENOMEM, "shape barriers: its parameters");
+    *b = (barriers){.density = density,
+                    .c_u = c_u,
+                    .m = m,
+                    .half = half,
+                    .rise = rise,
+                    .kappa = kappa,
+                    .cut = (1 - t0) / (1 + t0),
+                    .inside = m * m * (1 + q) / 4};
+    /* The nearest zeros of n, T = +-i m/sqrt(1 - m^2), have kappa s = -a +- i asin(m). */
+    width = hypot(atanh(t0), asin(m)) / kappa;
+    feature[0] = (th_feature){.x = -half, .width = width};
+    feature[1] = (th_feature){.x = half, .width = width};
+    reach = th_tail_reach(4 * rise * b->cut, 1 / kappa, c_u);
+    edge[0] = -half - reach;
+    edge[1] = -half;
+    edge[2] = half;
+    edge[3] = half + reach;
+    spec.ctx = b;
+    st = th_flow_create(&spec, ends, out, err);
+    if (st != TH_OK)
+        free(b);
+    return st;
+}
+
+const th_shape th_shape_barriers = {
+    .name = "barriers",
+    .doc = "exact flow through two repulsive delta barriers: a supersonic stretch between them, "
+           "cut grey solitons outside",
+    .keys = KEYS,
+    .key = {[SOUND_UPSTREAM] = {.key = "sound_upstream",
+                                .dimension = TH_DIM_SPEED,
+                                .below = HUGE_VAL,
+                                .fallback = 1,
+                                .si_only = true,
+                                .doc = "sound speed upstream; 1 in a reduced case"},
+            [MACH] = {.key = "mach",
+                      .dimension = TH_DIM_NUMBER,
+                      .below = 1,
+                      .doc = "upstream Mach number"},
+            [GAP] = {.key = "gap",
+                     .dimension = TH_DIM_LENGTH,
+                     .below = HUGE_VAL,
+                     .doc = "distance between the barriers"}},
+    .build = build,
+};
