@@ -35,7 +35,7 @@ typedef struct {
     double half;   /* of the distance between the barriers */
     double rise;   /* 1 - m^2 */
     double kappa;  /* inverse width of the soliton */
-    double cut;    /* e^{-2 a} = (1 - T0)/(1 + T0) */
+    double a;      /* its argument at the barrier */
     double inside; /* n_d, in units of the upstream density */
 } barriers;
 
@@ -44,10 +44,11 @@ static void eval(const void *ctx, int piece, double x, th_flow_point *point)
     const barriers *b = ctx;
     double side = piece < 1 ? -1 : 1; /* of the pocket */
     double s = fmax(0, side * x - b->half);
-    double e = b->cut * exp(-2 * b->kappa * s), t = (1 - e) / (1 + e);
-    double sech2 = 4 * e / ((1 + e) * (1 + e));
-    double r = piece == 1 ? b->inside : 1 - b->rise * sech2; /* n/N */
+    double y = b->kappa * s + b->a, e = exp(-2 * y), t = tanh(y);
+    double sech2 = 4 * e / ((1 + e) * (1 + e)), r = b->inside; /* r = n/N */
 
+    if (piece != 1) /* of two equal forms the one that cancels less */
+        r = t * t > 0.5 ? 1 - b->rise * sech2 : b->m * b->m + b->rise * t * t;
     *point = (th_flow_point){.n = b->density * r, .v = b->m * b->c_u / r, .c = b->c_u * sqrt(r)};
     if (piece == 1)
         return;
@@ -64,9 +65,11 @@ static th_status build(const double *value, const bool *given, double density, c
     static const bool uniform[3] = {false, true, false};
     double m = value[MACH], c_u = value[SOUND_UPSTREAM], rise = (1 - m) * (1 + m);
     double kappa = sqrt(rise) * c_u, half = value[GAP] / 2;
-    double q = sqrt(1 + 8 / (m * m)), t0 = sqrt(2 / (3 + q)), reach, width;
+    double q = sqrt(1 + 8 / (m * m)), t0 = sqrt(2 / (3 + q)), a = atanh(t0), reach;
     double edge[4];
-    th_feature feature[2];
+    /* The zeros of n nearest to the barrier are at kappa s = -a +- i asin(m). */
+    double width = hypot(a, asin(m)) / kappa;
+    th_feature feature[2] = {{.x = -half, .width = width}, {.x = half, .width = width}};
     th_flow_spec spec = {.eval = eval,
                          .release = free,
                          .pieces = 3,
@@ -91,13 +94,9 @@ static th_status build(const double *value, const bool *given, double density, c
                     .half = half,
                     .rise = rise,
                     .kappa = kappa,
-                    .cut = (1 - t0) / (1 + t0),
+                    .a = a,
                     .inside = m * m * (1 + q) / 4};
-    /* The nearest zeros of n, T = +-i m/sqrt(1 - m^2), have kappa s = -a +- i asin(m). */
-    width = hypot(atanh(t0), asin(m)) / kappa;
-    feature[0] = (th_feature){.x = -half, .width = width};
-    feature[1] = (th_feature){.x = half, .width = width};
-    reach = th_tail_reach(4 * rise * b->cut, 1 / kappa, c_u);
+    reach = th_tail_reach(4 * rise * exp(-2 * a), 1 / kappa, c_u);
     edge[0] = -half - reach;
     edge[1] = -half;
     edge[2] = half;

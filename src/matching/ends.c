@@ -138,7 +138,8 @@ static void pair_slopes(const th_end *e, double complex omega, double complex s,
     *dp = 2.0 * s * *ds - dq;
 }
 
-th_status th_end_frame(const th_end *end, double complex omega, th_frame *out, th_error *err)
+th_status th_end_frame(const th_end *end, double complex omega, th_frame *out, th_pair_sum *sum,
+                       th_error *err)
 {
     const double n = end->density, v = end->speed;
     const bool mirrored = creal(omega) < 0.0; /* k -> -k* when omega -> -omega* */
@@ -158,6 +159,7 @@ th_status th_end_frame(const th_end *end, double complex omega, th_frame *out, t
         ds = conj(ds);
         dp = -conj(dp);
     }
+    *sum = (th_pair_sum){s, ds};
     ratio = omega / p;
     dratio = (1.0 - ratio * dp) / p;
     /* divided difference of u over the pair, and the rest of its linear interpolation */

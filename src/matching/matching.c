@@ -23,7 +23,8 @@
 struct th_matching {
     th_steps steps;
     th_ends_kind ends;
-    th_end left, right; /* open ends */
+    th_end left, right;           /* open ends */
+    double left_tail, right_tail; /* scaled distance of each end to the nearest horizon */
 };
 
 /* Where the solutions meet: the middle of the longest pocket, or of the flow. */
@@ -59,6 +60,25 @@ static th_end end_of(const th_flow *flow, const th_steps *steps, int side)
                     .side = side};
 }
 
+/* Distances from the ends to the first and last horizon, or to the middle. */
+static void measure_tails(const th_flow *flow, th_matching *m)
+{
+    const th_horizon *horizon;
+    const double *edge;
+    double first, last;
+    int horizons, edges;
+
+    horizon = th_flow_horizons(flow, &horizons);
+    edge = th_flow_edges(flow, &edges);
+    first = last = 0.5 * (edge[0] + edge[edges - 1]);
+    if (horizons > 0) {
+        first = horizon[0].x;
+        last = horizon[horizons - 1].x;
+    }
+    m->left_tail = (first - edge[0]) * m->steps.speed0;
+    m->right_tail = (edge[edges - 1] - last) * m->steps.speed0;
+}
+
 th_status th_matching_create(const th_flow *flow, double omega_top, th_matching_grain grain,
                              th_matching **out, th_error *err)
 {
@@ -83,6 +103,7 @@ th_status th_matching_create(const th_flow *flow, double omega_top, th_matching_
     if (m->ends == TH_ENDS_OPEN) {
         m->left = end_of(flow, &m->steps, -1);
         m->right = end_of(flow, &m->steps, +1);
+        measure_tails(flow, m);
     }
     *out = m;
     return TH_OK;
@@ -142,12 +163,30 @@ static void orthonormalise(th_frame *f, th_scaled *scale)
     th_scaled_times(scale, r11 * r22, r11 * r22 * trace);
 }
 
+/* Multiply by exp(i length sum): a factor without zeros, analytic as the sum is. It takes back what
+ * the outgoing pair gains on its way through a nearly uniform tail, so that F turns slowly. */
+static void unwind(th_scaled *scale, const th_pair_sum *sum, double length)
+{
+    const double complex exponent = I * length * sum->value;
+    const double powers = floor(creal(exponent) / M_LN2);
+    const double complex factor = cexp(exponent - powers * M_LN2);
+
+    th_scaled_times(scale, factor, I * length * sum->slope * factor);
+    scale->exponent += (long)powers;
+}
+
 /* The frame at an end: outgoing waves, or eta = phi = 0 at a wall. */
 static th_status start(const th_matching *m, const th_end *end, double complex omega, th_frame *f,
-                       th_error *err)
+                       th_scaled *scale, th_error *err)
 {
-    if (m->ends == TH_ENDS_OPEN)
-        return th_end_frame(end, omega, f, err);
+    if (m->ends == TH_ENDS_OPEN) {
+        th_pair_sum sum;
+        const th_status st = th_end_frame(end, omega, f, &sum, err);
+
+        if (st == TH_OK)
+            unwind(scale, &sum, end->side < 0 ? -m->left_tail : m->right_tail);
+        return st;
+    }
     *f = (th_frame){0};
     f->y[0][1] = 1.0;
     f->y[1][3] = 1.0;
@@ -204,11 +243,12 @@ static th_status match(const th_matching *m, double complex omega, bool slope, t
 {
     th_frame left, right;
     double complex value, change;
-    th_status st = start(m, &m->left, omega, &left, err);
+    th_status st;
 
     *out = (th_scaled){1.0, 0.0, 0};
+    st = start(m, &m->left, omega, &left, out, err);
     if (st == TH_OK)
-        st = start(m, &m->right, omega, &right, err);
+        st = start(m, &m->right, omega, &right, out, err);
     if (st == TH_OK)
         st = carry(m, false, omega, slope, &left, out, err);
     if (st == TH_OK)
