@@ -90,11 +90,11 @@ typedef struct {
 /**
  * Solve one flow by four computations that check each other.
  *
- * Matrix: eigenvalues of the Bogoliubov matrix, each refined on two discretisations that differ in
- * order, elements and angle of the complex scaling. Matching: each of these polished as a zero of
- * the matching function, twice. Census: growing modes counted by the argument principle; with open
- * ends they are also found that way. Index: the static count. Any conflict makes the verdict
- * undecided and says why.
+ * Matrix: all eigenvalues of a coarse Bogoliubov matrix, each refined on two finer discretisations
+ * that differ in order, elements and angle of the complex scaling. Matching: each of these polished
+ * as a zero of the matching function, twice. Census: growing modes counted by the argument
+ * principle; with open ends they are also found that way. Index: the static count. Any conflict
+ * makes the verdict undecided and says why.
  *
  * @param[in]  flow      borrowed
  * @param[in]  options   accuracy
@@ -118,7 +118,8 @@ TH_MUST_USE th_status th_solve(const th_flow *flow, const th_solve_options *opti
 void th_solution_destroy(th_solution *solution);
 
 /**
- * Write the matrix that th_solve hands to the dense eigensolver first, in Matrix Market form.
+ * Write the matrix whose eigenvalues th_solve refines, at the accuracy asked for, in Matrix Market
+ * form. (The dense eigensolver gets a coarser one: it only has to find candidates.)
  * @param[in] title  one line for the file's comment
  * @retval TH_EIO  the stream refused
  */

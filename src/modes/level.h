@@ -1,7 +1,7 @@
 /* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
- * The two discretisations that th_solve compares. Private to modes. Depends on mesh, operator. */
+ * The discretisations that th_solve compares. Private to modes. Depends on mesh, operator. */
 #ifndef TH_MODES_LEVEL_H
 #define TH_MODES_LEVEL_H
 
@@ -15,8 +15,12 @@ typedef struct {
     th_operator *op;
 } th_level;
 
-/* base: diagonalised densely. check: finer, other elements, other angle; refined by iteration. */
-typedef enum { TH_LEVEL_BASE, TH_LEVEL_CHECK } th_level_kind;
+/* base: coarse, diagonalised densely for candidates. fine: has the accuracy asked for. check: finer
+ * still, with other elements and another angle. Candidates are refined on the last two by
+ * iteration; their disagreement measures the fine one. */
+typedef enum { TH_LEVEL_BASE, TH_LEVEL_FINE, TH_LEVEL_CHECK } th_level_kind;
+
+enum { TH_LEVELS = 3 };
 
 /**
  * @param[in] accuracy   of th_solve_options

@@ -3,9 +3,10 @@
  *
  * Modes from the Bogoliubov matrix. In: a flow. Out: th_solution.mode, unlabelled. Calls level,
  * spectrum, shape.
- * The dense eigenvalues of the base level are candidates; each is refined on both levels and kept
- * when the two agree. Above TH_ORDINARY_SIZE the candidates of open flows come from the census.
- * Symbols: omega frequency, theta angle of the complex scaling. Proof: tests/test_modes.c. */
+ * The dense eigenvalues of the base level are candidates; each is refined on the fine and the check
+ * level and kept when the two agree. Above TH_ORDINARY_SIZE the candidates of open flows come from
+ * the census. Symbols: omega frequency, theta angle of the complex scaling. Proof:
+ * tests/test_modes.c. */
 #include "modes/solver.h"
 
 #include <gsl/gsl_math.h>
@@ -73,8 +74,9 @@ static th_status describe(const th_solver *w, const th_eigenpair *pair, th_mode 
                           th_error *err)
 {
     th_mode_shape shape;
-    th_status st = th_mode_shape_find(w->flow, w->check.mesh, w->check.op, pair->omega, pair->right,
-                                      &shape, err);
+    th_status st =
+        th_mode_shape_find(w->flow, w->level[TH_LEVEL_CHECK].mesh, w->level[TH_LEVEL_CHECK].op,
+                           pair->omega, pair->right, &shape, err);
 
     if (st != TH_OK)
         return st;
@@ -86,16 +88,16 @@ static th_status describe(const th_solver *w, const th_eigenpair *pair, th_mode 
     return TH_OK;
 }
 
-/* Refine one candidate on both levels; a mode goes to the list. Not settling is not a failure. */
+/* Refine one candidate on two levels; a mode goes to the list. Not settling is not a failure. */
 static th_status examine(th_solver *w, double complex omega, th_error *err)
 {
     th_eigenpair coarse = {0}, fine = {0};
     th_mode mode = {.confirmed = TH_BY_MATRIX};
     double apart = HUGE_VAL;
-    th_status st = th_spectrum_refine(w->base.op, omega, &coarse, err);
+    th_status st = th_spectrum_refine(w->level[TH_LEVEL_FINE].op, omega, &coarse, err);
 
     if (st == TH_OK)
-        st = th_spectrum_refine(w->check.op, coarse.omega, &fine, err);
+        st = th_spectrum_refine(w->level[TH_LEVEL_CHECK].op, coarse.omega, &fine, err);
     if (st == TH_OK)
         apart = cabs(coarse.omega - fine.omega);
     if (st == TH_ECONVERGE || (st == TH_OK && !(apart <= same_mode * cabs(fine.omega)))) {
@@ -119,7 +121,7 @@ static th_status examine_all(th_solver *w, th_error *err)
 {
     double complex *omega = NULL;
     int count = 0;
-    th_status st = th_spectrum_all(w->base.op, &omega, &count, err);
+    th_status st = th_spectrum_all(w->level[TH_LEVEL_BASE].op, &omega, &count, err);
 
     for (int i = 0; st == TH_OK && i < count; i++) {
         w->neutral += fabs(cimag(omega[i])) < w->census.floor && creal(omega[i]) > 0.0 &&
@@ -134,22 +136,21 @@ static th_status examine_all(th_solver *w, th_error *err)
 th_status th_matrix_modes(th_solver *w, double omega_low, th_error *err)
 {
     th_solution *s = w->s;
-    th_status st;
+    const th_level *base = &w->level[TH_LEVEL_BASE];
+    th_status st = TH_OK;
 
     s->count = 0;
     w->unmatched = w->neutral = 0;
-    th_level_clear(&w->base);
-    th_level_clear(&w->check);
-    st = th_level_create(w->flow, TH_LEVEL_BASE, w->options->accuracy, s->omega_top, omega_low,
-                         &w->base, err);
-    if (st == TH_OK)
-        st = th_level_create(w->flow, TH_LEVEL_CHECK, w->options->accuracy, s->omega_top, omega_low,
-                             &w->check, err);
+    for (int i = 0; st == TH_OK && i < TH_LEVELS; i++) {
+        th_level_clear(&w->level[i]);
+        st = th_level_create(w->flow, (th_level_kind)i, w->options->accuracy, s->omega_top,
+                             omega_low, &w->level[i], err);
+    }
     if (st != TH_OK)
         return st;
-    s->unknowns = w->base.op->size;
-    s->zero_modes = w->base.op->ring ? 2 : 0;
-    s->absorbing = w->base.mesh->absorbing;
+    s->unknowns = base->op->size;
+    s->zero_modes = base->op->ring ? 2 : 0;
+    s->absorbing = base->mesh->absorbing;
     s->dense = th_solver_conserving(w) || !s->census_known || s->unknowns <= TH_ORDINARY_SIZE;
     if (!s->dense)
         return TH_OK;

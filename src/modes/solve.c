@@ -87,8 +87,8 @@ th_status th_solve(const th_flow *flow, const th_solve_options *options, th_solu
         return th_fail(err, TH_ENOMEM, "solve: one object");
     w.s->omega_top = th_mesh_band_limit(flow);
     st = run(&w, err);
-    th_level_clear(&w.base);
-    th_level_clear(&w.check);
+    for (int i = 0; i < TH_LEVELS; i++)
+        th_level_clear(&w.level[i]);
     th_matching_destroy(w.usual);
     th_matching_destroy(w.fine);
     free(w.root);
@@ -110,17 +110,17 @@ void th_solution_destroy(th_solution *solution)
 th_status th_matrix_write(const th_flow *flow, const th_solve_options *options, const char *title,
                           FILE *stream, th_error *err)
 {
-    th_level base = {NULL, NULL};
+    th_level fine = {NULL, NULL};
     double top;
     th_status st = check(flow, options, err);
 
     if (st != TH_OK)
         return st;
     top = th_mesh_band_limit(flow);
-    st = th_level_create(flow, TH_LEVEL_BASE, options->accuracy, top, th_matrix_reach(0) * top,
-                         &base, err);
+    st = th_level_create(flow, TH_LEVEL_FINE, options->accuracy, top, th_matrix_reach(0) * top,
+                         &fine, err);
     if (st == TH_OK)
-        st = th_operator_write(base.op, title, stream, err);
-    th_level_clear(&base);
+        st = th_operator_write(fine.op, title, stream, err);
+    th_level_clear(&fine);
     return st;
 }

@@ -16,10 +16,10 @@ typedef struct {
     const th_flow *flow;
     const th_solve_options *options;
     th_solution *s;
-    int room;             /* capacity of s->mode */
-    th_level base, check; /* matrix.c */
-    int unmatched;        /* growing candidates that the check level did not confirm */
-    int neutral;          /* rings, walls: dense eigenvalues in the census' strip */
+    int room;                  /* capacity of s->mode */
+    th_level level[TH_LEVELS]; /* matrix.c */
+    int unmatched;             /* growing candidates that the check level did not confirm */
+    int neutral;               /* rings, walls: dense eigenvalues in the census' strip */
     th_matching *usual, *fine;
     th_census census;
     double (*root)[2]; /* [roots] growing modes found by the census, open ends */
@@ -32,7 +32,7 @@ bool th_solver_conserving(const th_solver *w);
 /** Frequency of a listed mode. */
 double complex th_mode_omega(const th_mode *mode);
 
-/* ---- matrix.c: modes from the two matrices --------------------------------------------------- */
+/* ---- matrix.c: modes from the matrices ------------------------------------------------------- */
 
 /** Fill the list from scratch with ends that resolve modes down to omega_low. Errors as th_solve.
  */
