@@ -6,12 +6,17 @@
 # Files are found by their place, so a new one needs no line here:
 #   src/*.c src/*/*.c   the library        src/cli/*.c     the program
 #   tests/test_*.c      a cmocka program   tests/*.py *.sh a TAP script, given the program as $1
-# Settings: CC=gcc|clang  CFLAGS  BUILD=folder  PREFIX  DESTDIR  JOBS=tests at a time  V=1
+# Settings: CC=gcc|clang  CFLAGS  BUILD=folder  MPI=1  PREFIX  DESTDIR  JOBS=tests at a time  V=1
 
 ifeq ($(origin CC),default)
 CC := gcc
 endif
+# MPI=1 builds a program that runs on several processes, in a folder of its own.
+ifeq ($(MPI),1)
+BUILD  ?= build/mpi
+else
 BUILD  ?= build
+endif
 PREFIX ?= /usr/local
 CFLAGS ?= -O2 -g
 PYTHON ?= $(firstword $(wildcard /usr/bin/python3) python3)
@@ -23,23 +28,23 @@ SONAME  := libtwinhorizon.so.$(firstword $(subst ., ,$(VERSION)))
 # ---- what must be installed: the only list ---------------------------------------------------
 # Debian packages, and for other systems the same in words with the oldest version tried.
 RUN_PACKAGES    := make gcc libc6-dev pkg-config liblapacke-dev libopenblas-dev libgsl-dev libinih-dev
-TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy git
+TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath git
 AUTHOR_PACKAGES := clang clang-format cppcheck shellcheck valgrind
 RUN_WORDS       := make 4.3, gcc 12 or clang 14, pkg-config, LAPACKE 3.11, OpenBLAS 0.3.21, GSL 2.7, inih 55
-TEST_WORDS      := cmocka 1.1.5, python 3.11 with numpy 1.24 and scipy 1.10, git
+TEST_WORDS      := cmocka 1.1.5, python 3.11 with numpy 1.24, scipy 1.10 and mpmath 1.2, git
 AUTHOR_WORDS    := clang 14, clang-format 14, cppcheck 2.10, shellcheck 0.9, valgrind 3.19
 
 # $(call install,packages,words,needed commands)
 install = sh tests/deps '$(1)' '$(2)' '$(3)'
 
 # ---- flags -----------------------------------------------------------------------------------
-LANGUAGE := -std=c11 -D_POSIX_C_SOURCE=200809L
+LANGUAGE := -std=c11 -D_POSIX_C_SOURCE=200809L -pthread
 WARNINGS := -Wall -Wextra -Wpedantic -Wshadow -Wconversion -Wstrict-prototypes \
             -Wmissing-prototypes -Werror
 # Asked once, and only when something is compiled; GSL uses OpenBLAS's cblas instead of its own.
 PKG_CFLAGS = $(eval PKG_CFLAGS := $(shell pkg-config --cflags lapacke openblas gsl inih))$(PKG_CFLAGS)
 LIBS       = $(eval LIBS := $(filter-out -lgslcblas -lm,$(shell pkg-config --libs gsl lapacke \
-             openblas inih)) -lm)$(LIBS)
+             openblas inih)) -pthread -lm)$(LIBS)
 COMPILE    = $(CC) $(LANGUAGE) $(WARNINGS) $(CFLAGS) -fPIC -MMD -MP $(INCLUDES) $(PKG_CFLAGS) -c
 LINK       = $(CC) $(CFLAGS) $(LDFLAGS)
 SAY        = $(if $(V),,@echo "  $@"; )
@@ -71,6 +76,10 @@ all: $(ARCHIVE) $(SHARED) $(PROGRAM)
 # ---- building --------------------------------------------------------------------------------
 # The program sees public headers only; library and tests also see private ones.
 $(CLI_OBJECTS): INCLUDES := -Iinclude
+ifeq ($(MPI),1)
+$(BUILD)/src/cli/ranks.o: INCLUDES := -Iinclude -DTH_WITH_MPI $(shell pkg-config --cflags ompi-c)
+$(PROGRAM): MORE_LIBS = $(shell pkg-config --libs ompi-c)
+endif
 INCLUDES := -Iinclude -Isrc -Itests
 
 $(BUILD)/%.o: %.c Makefile
@@ -86,7 +95,7 @@ $(SHARED): $(LIB_OBJECTS) src/twinhorizon.map
 	    -Wl,--version-script=src/twinhorizon.map $(LIB_OBJECTS) $(LIBS) -o $@
 
 $(PROGRAM): $(CLI_OBJECTS) $(ARCHIVE)
-	$(SAY)$(LINK) $^ $(LIBS) -o $@
+	$(SAY)$(LINK) $^ $(LIBS) $(MORE_LIBS) -o $@
 
 # A test that includes refuse.h stands between the library and its allocator.
 $(BUILD)/tests/test_%: $(BUILD)/tests/test_%.o $(ARCHIVE)

@@ -153,7 +153,7 @@ th_status th_index_closed(const th_flow *flow, th_index *out, th_error *err)
         return th_fail(err, TH_EINVAL,
                        "static index: want a ring or walls and a place for the "
                        "result");
-    options.omega_top = th_mesh_band_limit(flow);
+    options.omega_top = th_flow_band_limit(flow);
     st = th_mesh_create(flow, &options, &mesh, err);
     if (st != TH_OK)
         return st;

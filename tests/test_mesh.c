@@ -425,13 +425,13 @@ static void test_band_limit(void **state)
     th_flow *flow = step_flow(1, 1.5, 0.5, 1.3, 6);
 
     (void)state;
-    close_to("band", th_mesh_band_limit(flow), th_band_top(1, 0.5), 1e-15);
+    close_to("band", th_flow_band_limit(flow), th_band_top(1, 0.5), 1e-15);
     th_flow_destroy(flow);
     flow = step_flow(1, 1.5, 0.9, 0.4, 6); /* the open end is the faster place */
-    close_to("band", th_mesh_band_limit(flow), th_band_top(1, 0.4), 1e-15);
+    close_to("band", th_flow_band_limit(flow), th_band_top(1, 0.4), 1e-15);
     th_flow_destroy(flow);
     flow = flow_of("step", open_ends(), quiet); /* nowhere supersonic: c^2/4 */
-    close_to("band", th_mesh_band_limit(flow), 1.5 * 1.5 / 4, 1e-15);
+    close_to("band", th_flow_band_limit(flow), 1.5 * 1.5 / 4, 1e-15);
     th_flow_destroy(flow);
 }
 

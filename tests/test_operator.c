@@ -27,8 +27,8 @@ static pair pair_of(const th_flow *flow, int order)
 {
     const th_mesh_options o = {.order = order,
                                .accuracy = 1e-12,
-                               .omega_top = th_mesh_band_limit(flow),
-                               .omega_low = 1e-3 * th_mesh_band_limit(flow),
+                               .omega_top = th_flow_band_limit(flow),
+                               .omega_low = 1e-3 * th_flow_band_limit(flow),
                                .angle = 0.6,
                                .layer = 1};
     pair p = {NULL, NULL};

@@ -285,8 +285,8 @@ static spectrum spectrum_of(const th_flow *flow, int order)
 {
     const th_mesh_options o = {.order = order,
                                .accuracy = 1e-12,
-                               .omega_top = th_mesh_band_limit(flow),
-                               .omega_low = 1e-3 * th_mesh_band_limit(flow),
+                               .omega_top = th_flow_band_limit(flow),
+                               .omega_low = 1e-3 * th_flow_band_limit(flow),
                                .angle = 0.6,
                                .layer = 1};
     spectrum s = {0};
@@ -402,7 +402,7 @@ static void test_pairing(void **state)
     (void)state;
     for (int f = 0; f < 3; f++) {
         spectrum s = spectrum_of(flow[f], 12);
-        const double top = 3 * th_mesh_band_limit(flow[f]);
+        const double top = 3 * th_flow_band_limit(flow[f]);
         double growth = 0;
         int seen = 0;
 
@@ -461,7 +461,7 @@ static void test_refine(void **state)
 
     (void)state;
     for (int f = 0; f < 4; f++) {
-        refine_all(flow[f], 10, 3 * th_mesh_band_limit(flow[f]), 10);
+        refine_all(flow[f], 10, 3 * th_flow_band_limit(flow[f]), 10);
         th_flow_destroy(flow[f]);
     }
 }

@@ -147,6 +147,11 @@ double th_flow_potential(const th_flow *flow, const th_flow_point *point);
  * left of the first pocket to the right of the last one; 0 when there is no pocket. */
 double th_flow_horizon_distance(const th_flow *flow);
 
+/** Frequencies up to which a flow can hold negative-energy waves: the top of the band over
+ * pockets, edges and ends; where there is no supersonic place, the frequency c^2/4 of waves of
+ * about the healing length, so that phonons are listed. Reduced rate, > 0. */
+double th_flow_band_limit(const th_flow *flow);
+
 /* ---- shapes: flows from a few named parameters ---------------------------------------------- */
 
 enum { TH_SHAPE_KEYS_MAX = 12 };

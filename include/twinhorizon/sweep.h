@@ -1,51 +1,98 @@
 /* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
- * Sweeps: one configuration after another over the axes of a case. What goes in: a case with a
- * [sweep] section. What comes out: each point's answer, handed to a callback in a fixed order.
- * Depends on case, modes, flow, status. */
+ * Sweeps: every point of the axes of a case, on several threads, into a journal; and the branches
+ * that modes of neighbouring points form. What goes in: a case with a [sweep] section. What comes
+ * out: finished points in the journal, in any order. Depends on case, journal, point, status. */
 #ifndef TWINHORIZON_SWEEP_H
 #define TWINHORIZON_SWEEP_H
 
+#include <stdatomic.h>
 #include <twinhorizon/case.h>
-#include <twinhorizon/modes.h>
+#include <twinhorizon/journal.h>
+#include <twinhorizon/point.h>
 #include <twinhorizon/status.h>
 
 #ifdef __cplusplus
 extern "C" {
 #endif
 
-/* One finished point. Pointers are valid during the callback only. */
-typedef struct {
-    long number;               /* 0 .. points - 1, last axis fastest */
-    const double *value;       /* [axes] reduced units */
-    th_status status;          /* TH_OK, or why the point has no answer */
-    const char *message;       /* the sentence of that failure; "" when TH_OK */
-    double horizon_distance;   /* reduced; 0 without a pair of horizons or after a failure */
-    const th_solution *answer; /* NULL after a failure */
-    const int *branch;         /* [answer->count] identity of each mode along the last axis: modes
-                                  of neighbouring points that continue each other share it;
-                                  numbers start at 1 in each line of the last axis */
-} th_sweep_point;
+/* Points are dealt out in blocks of neighbours along the last axis; inside a block each point
+ * starts from the ones before it. Blocks, and with them all results, do not depend on the number
+ * of threads. Long enough that the first point's search does not count, short enough to share. */
+enum { TH_SWEEP_BLOCK = 32 };
 
-/** What a caller does with a point; anything but TH_OK ends the sweep with that status. */
-typedef th_status (*th_sweep_sink)(void *ctx, const th_sweep_point *point, th_error *err);
+typedef struct {
+    int threads;            /* >= 1 */
+    int part, parts;        /* this run does blocks part - 1, part - 1 + parts, ...;
+                               1 <= part <= parts */
+    const atomic_int *stop; /* nonzero: finish the points in flight and return; may be NULL */
+    void (*done)(void *ctx, const th_point *point); /* after each point is in the journal; called
+                                by one thread at a time; may be NULL */
+    void *ctx;
+} th_sweep_options;
 
 /** Number of points: the product of the axes' counts.
  * @retval TH_EINVAL  the case has no axes, or the product exceeds 2^31 - 1 */
 TH_MUST_USE th_status th_sweep_size(const th_case *c, long *points, th_error *err);
 
+/** Number of blocks of a sweep of so many points (th_sweep_size). */
+long th_sweep_blocks(const th_case *c);
+
+/** Points of a block: first <= number < first + count. */
+void th_sweep_block(const th_case *c, long block, long *first, int *count);
+
+/** Values of a point along the axes, value[axes], reduced units. */
+void th_sweep_values(const th_case *c, long number, double *value);
+
+/** Configuration of a point. */
+th_flow_setup th_sweep_setup(const th_case *c, long number);
+
 /**
- * Run a sweep, point by point, first axis slowest.
+ * Run what the journal lacks of a sweep, or of a part of it.
  *
- * A point that cannot be built or solved is handed on with its status and the sweep goes on; only
- * TH_ENOMEM and TH_EBUG end it.
- *
- * @retval TH_OK      every point was handed to sink
- * @retval TH_EINVAL  as th_sweep_size
- * Reentrant. Cost: a th_solve for each point.
+ * A point that cannot be built or solved is recorded as failed and the sweep goes on.
+ * @retval TH_OK      done, or stopped: th_journal_count tells
+ * @retval TH_EINVAL  an option breaks its rule, or as th_sweep_size
+ * @retval TH_EIO     the journal cannot be written
+ * @retval TH_ENOMEM, TH_EBUG
  */
-TH_MUST_USE th_status th_sweep_run(const th_case *c, th_sweep_sink sink, void *ctx, th_error *err);
+TH_MUST_USE th_status th_sweep_run(const th_case *c, const th_sweep_options *options,
+                                   th_journal *journal, th_error *err);
+
+/** Run one block without a journal: known[0..knowns-1] are its first points, finished before;
+ * the others are computed and handed to sink in order. For those who deal out blocks themselves.
+ * Anything but TH_OK from sink ends the block with that status. Errors as th_sweep_run. */
+TH_MUST_USE th_status th_sweep_run_block(const th_case *c, long block, const th_point *known,
+                                         int knowns,
+                                         th_status (*sink)(void *ctx, const th_point *point,
+                                                           th_error *err),
+                                         void *ctx, const atomic_int *stop, th_error *err);
+
+/* ---- branches ------------------------------------------------------------------------------- */
+
+/* Identity of modes along the last axis. Start from {0}; th_branches_clear begins a new line and
+ * releases memory. */
+typedef struct {
+    int count;         /* modes at the previous point */
+    int *branch;       /* [count] */
+    double *re, *im;   /* [count] where they were */
+    double *dre, *dim; /* [count] their last steps, 0 for a new mode */
+    int last;          /* highest number given so far in this line */
+} th_branches;
+
+/**
+ * Give the modes of the next point their branches: each continues the mode of the previous point
+ * whose linear continuation lies nearest, nearest pairs first; a pair farther apart than `reach`
+ * is none, and modes without one start new branches in the order of the list, from 1.
+ *
+ * @param[out] branch  [point->count]
+ * @retval TH_ENOMEM   the line's memory is unchanged
+ */
+TH_MUST_USE th_status th_branches_next(th_branches *line, const th_point *point, double reach,
+                                       int *branch, th_error *err);
+
+void th_branches_clear(th_branches *line);
 
 #ifdef __cplusplus
 }

@@ -20,6 +20,9 @@ static const double beyond = 3.0;
 /* Smallest |omega| of the contour, relative to the top. F = E/omega is known there to rounding
  * over this: a millionth leaves nine digits. */
 static const double innermost = 1e-6;
+/* F is known to rounding relative to c^2, so a band narrower than this share of c^2 is taken this
+ * wide: 1e-10 c^2 is the innermost |omega| at least. */
+static const double narrowest_band = 1e-4;
 /* Rings and walls: what grows slower than this, relative to the top, counts as neutral. F =
  * E/omega^2 is known there to rounding over its square. */
 static const double neutral_floor = 1e-5;
@@ -107,15 +110,18 @@ th_status th_region_count(const th_flow *flow, const th_matching *matching, doub
                           th_region *r, th_error *err)
 {
     const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
+    const double sound = th_flow_sound_max(flow);
+    double top;
     th_status st;
 
     memset(r, 0, sizeof *r);
     if (!(omega_top > 0.0))
         return th_fail(err, TH_EINVAL, "census: omega_top = %g, want > 0", omega_top);
-    r->census.re_max = beyond * omega_top;
-    r->census.floor = open ? 0.0 : neutral_floor * omega_top;
-    r->census.slowest = open ? innermost * omega_top : 0.0;
-    r->census.im_max = fmax(th_growth_bound(flow), 10.0 * neutral_floor * omega_top);
+    top = fmax(omega_top, narrowest_band * sound * sound);
+    r->census.re_max = beyond * top;
+    r->census.floor = open ? 0.0 : neutral_floor * top;
+    r->census.slowest = open ? innermost * top : 0.0;
+    r->census.im_max = fmax(th_growth_bound(flow), 10.0 * neutral_floor * top);
     st = bottom(r, matching, err);
     if (st == TH_OK)
         st = lid(r, matching, err);

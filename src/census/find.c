@@ -15,8 +15,10 @@
 
 #include "alloc.h"
 
-/* Two roots closer than this, relative, are one: polished roots are good to 1e-14. */
-static const double same_root = 1e-10;
+/* Two roots closer than this, relative, are one: polished roots are good to 1e-14. So are two
+ * closer than this many times the last step of their polishing: slow modes of flows close to v = c
+ * are known less well. */
+static const double same_root = 1e-10, same_steps = 100.0;
 /* A root this close to the imaginary axis, relative, lies on it. */
 static const double on_axis = 1e-11;
 enum { CUTS = 40, HEIGHTS = 12, ACROSS = 4 };
@@ -44,9 +46,11 @@ static int found_between(const search *s, double from, double to)
     return sum;
 }
 
-static th_status add(search *s, double complex root, th_error *err)
+/* `last` is the last step of the root's polishing. */
+static th_status add(search *s, double complex root, double last, th_error *err)
 {
     const th_census *c = &s->region->census;
+    const double same = fmax(same_root * cabs(root), same_steps * last);
 
     if (fabs(creal(root)) <= on_axis * cabs(root))
         root = I * cimag(root);
@@ -56,7 +60,7 @@ static th_status add(search *s, double complex root, th_error *err)
         cabs(root) <= c->slowest)
         return TH_OK;
     for (int i = 0; i < s->count; i++)
-        if (cabs(s->root[i] - root) <= same_root * cabs(root))
+        if (cabs(s->root[i] - root) <= same)
             return TH_OK;
     if (s->count == s->room) {
         int room = s->room > 0 ? 2 * s->room : 64;
@@ -78,7 +82,7 @@ static th_status try_from(search *s, double complex start, double reach, th_erro
 
     if (th_matching_polish(s->matching, reach, &re, &im, &last, NULL) != TH_OK)
         return TH_OK;
-    return add(s, re + I * im, err);
+    return add(s, re + I * im, last, err);
 }
 
 /* Start where |F/F'| is smallest along a path: there a mode is close. */

@@ -96,5 +96,7 @@ th_status cli_print_sensitivity(const th_case *c, const th_solution *s, th_error
 int cli_solve(int argc, char **argv);
 int cli_flow(int argc, char **argv);
 int cli_sweep(int argc, char **argv);
+int cli_onset(int argc, char **argv);
+int cli_merge(int argc, char **argv);
 
 #endif

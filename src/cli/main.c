@@ -9,6 +9,7 @@
 #include <twinhorizon/version.h>
 
 #include "cli.h"
+#include "ranks.h"
 
 static const struct {
     const char *name;
@@ -17,6 +18,8 @@ static const struct {
 } command[] = {
     {"solve", "modes, growth rates and verdict of one configuration", cli_solve},
     {"sweep", "growth-rate table over the axes of a case", cli_sweep},
+    {"merge", "tables of a sweep that was run in parts", cli_merge},
+    {"onset", "pocket lengths at which modes switch on, alone or over the axes of a case", cli_onset},
     {"flow", "the stationary flow: horizons, pockets, the potential it needs", cli_flow},
 };
 enum { COMMANDS = sizeof command / sizeof command[0] };
@@ -28,7 +31,7 @@ static void help(FILE *stream)
             "condensates\n\n",
             th_version());
     for (int i = 0; i < COMMANDS; i++)
-        fprintf(stream, "  twinhorizon %-6s CASE ...   %s\n", command[i].name, command[i].doc);
+        fprintf(stream, "  twinhorizon %-6s ...        %s\n", command[i].name, command[i].doc);
     fprintf(stream, "\n  twinhorizon COMMAND --help    options of a command\n"
                     "  twinhorizon --version         version\n\n"
                     "Exit: 0 done; 1 finished, but something is undecided or failed; 2 command "
@@ -63,16 +66,26 @@ static int run(int argc, char **argv)
     return cli_usage("there is no command '%s'; twinhorizon --help lists them", argv[1]);
 }
 
+/* Ranks beside the first help with sweeps and keep quiet. */
+static int run_helper(int argc, char **argv)
+{
+    if (argc < 2 || strcmp(argv[1], "sweep") != 0 || freopen("/dev/null", "w", stdout) == NULL ||
+        freopen("/dev/null", "w", stderr) == NULL)
+        return CLI_DONE;
+    return run(argc, argv);
+}
+
 int main(int argc, char **argv)
 {
     int code;
 
+    cli_ranks_begin(&argc, &argv);
     gsl_set_error_handler_off();
     one_blas_thread();
-    code = run(argc, argv);
+    code = cli_rank() == 0 ? run(argc, argv) : run_helper(argc, argv);
     if (fflush(stdout) != 0 || ferror(stdout)) {
         fprintf(stderr, "twinhorizon: standard output cannot be written (%s)\n", strerror(errno));
-        return code == CLI_INTERNAL ? code : CLI_USAGE;
+        code = code == CLI_INTERNAL ? code : CLI_USAGE;
     }
-    return code;
+    return cli_ranks_end(code);
 }

@@ -1,267 +1,176 @@
 /* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
- * twinhorizon sweep CASE --out DIR: points.csv, the growth-rate table, one row per configuration,
- * and modes.csv, one row per mode of each. Rows reach the disk point by point, modes first, so
- * that a run that is killed leaves every finished point in DIR/points.csv.part. */
+ * twinhorizon sweep CASE --out DIR: every finished point goes to DIR/journal at once; at the end
+ * the tables are written from it. Ctrl-C finishes the points in flight; --resume goes on. */
 #include <errno.h>
+#include <signal.h>
+#include <stdatomic.h>
 #include <stdlib.h>
 #include <string.h>
-#include <sys/stat.h>
 #include <twinhorizon/sweep.h>
 #include <unistd.h>
 
 #include "cli.h"
+#include "progress.h"
+#include "ranks.h"
+#include "tables.h"
 
-typedef struct {
-    const th_case *c;
-    th_table *points, *modes;
-    long total, undecided, failed, unstable;
-    bool show; /* progress on standard error */
-} state;
+static atomic_int stop; /* set by the signal handler */
 
-/* The axes' columns, the same in both tables. */
-static int axis_columns(const th_case *c, th_column *column)
+static void on_signal(int number)
 {
-    for (int a = 0; a < c->axes; a++) {
-        const th_shape_key *key = &c->setup.shape->key[c->axis[a].key];
+    (void)number;
+    atomic_store(&stop, 1);
+}
 
-        column[a] = (th_column){.name = key->key,
-                                .title = key->doc,
-                                .unit = cli_unit(c, key->dimension),
-                                .datatype = "number"};
+/* The second signal ends the program at once. */
+static void catch_signals(void)
+{
+    struct sigaction action;
+
+    memset(&action, 0, sizeof action);
+    action.sa_handler = on_signal;
+    action.sa_flags = (int)SA_RESETHAND;
+    (void)sigemptyset(&action.sa_mask);
+    (void)sigaction(SIGINT, &action, NULL);
+    (void)sigaction(SIGTERM, &action, NULL);
+}
+
+/* "K/N" */
+static bool read_part(const char *text, int *part, int *parts)
+{
+    char *end;
+
+    errno = 0;
+    *part = (int)strtol(text, &end, 10);
+    if (errno != 0 || end == text || *end != '/')
+        return false;
+    text = end + 1;
+    *parts = (int)strtol(text, &end, 10);
+    return errno == 0 && end != text && *end == '\0' && *part >= 1 && *part <= *parts &&
+           *parts <= 1000000;
+}
+
+static bool read_threads(const char *text, int *threads)
+{
+    char *end;
+    long value;
+
+    errno = 0;
+    value = strtol(text, &end, 10);
+    if (errno != 0 || end == text || *end != '\0' || value < 1 || value > 1024)
+        return false;
+    *threads = (int)value;
+    return true;
+}
+
+static void done(void *ctx, const th_point *point)
+{
+    cli_progress *progress = ctx;
+
+    if (point->state == TH_POINT_FAILED)
+        fprintf(stderr, "%stwinhorizon: point %ld has no answer: %s\n", progress->show ? "\n" : "",
+                point->number + 1, point->message);
+    cli_progress_step(progress, point->unstable > 0);
+}
+
+static th_status get(void *ctx, long number, th_point *point, th_error *err)
+{
+    return th_journal_get(ctx, number, point, err);
+}
+
+/* Points of this part of the sweep. */
+static long share(const th_case *c, const th_sweep_options *o)
+{
+    long sum = 0, first;
+    int count;
+
+    for (long b = o->part - 1; b < th_sweep_blocks(c); b += o->parts) {
+        th_sweep_block(c, b, &first, &count);
+        sum += count;
     }
-    return c->axes;
+    return sum;
 }
 
-static th_status start(const char *folder, const char *name, const th_column *own, int count,
-                       const char *title, const th_case *c, th_table **out, th_error *err)
+static th_status run(const th_case *c, th_sweep_options *o, bool resume, const char *folder,
+                     const char *path, int *code, th_error *err)
 {
-    th_column column[TH_SHAPE_KEYS_MAX + 16];
-    const int axes = axis_columns(c, column);
-    const size_t size = strlen(folder) + strlen(name) + 2;
-    char *path = malloc(size);
-    th_status st;
-
-    if (path == NULL)
-        return th_fail(err, TH_ENOMEM, "sweep: a name of %zu bytes", size);
-    (void)snprintf(path, size, "%s/%s", folder, name);
-    for (int i = 0; i < count; i++)
-        column[axes + i] = own[i];
-    st = th_table_create(path, NULL, column, axes + count, title, c->text, out, err);
-    if (st == TH_OK)
-        th_table_keep(*out); /* what is finished stays, whatever ends the run */
-    free(path);
-    return st;
-}
-
-static th_status start_tables(state *w, const char *folder, th_error *err)
-{
-    const char *rate = cli_unit(w->c, TH_DIM_RATE);
-    const th_column points[] = {
-        {.name = "horizon_distance",
-         .title = "first black-hole to last white-hole horizon",
-         .unit = cli_unit(w->c, TH_DIM_LENGTH),
-         .datatype = "number"},
-        {.name = "index", .title = "static index", .datatype = "integer"},
-        {.name = "census",
-         .title = "growing modes counted by the argument principle",
-         .datatype = "integer",
-         .description = "empty when it could not decide"},
-        {.name = "unstable",
-         .title = "growing modes found, both signs of the frequency",
-         .datatype = "integer"},
-        {.name = "growth_max",
-         .title = "largest growth rate, 0 when nothing grows",
-         .unit = rate,
-         .datatype = "number"},
-        {.name = "omega_re_fastest",
-         .title = "angular frequency of the fastest growing mode",
-         .unit = rate,
-         .datatype = "number",
-         .description = "empty when nothing grows"},
-        {.name = "status",
-         .title = "state of the point",
-         .datatype = "string",
-         .format = "ok|undecided|failed"},
-    };
-    const th_column modes[] = {
-        {.name = "mode", .title = "number at this point, by growth rate", .datatype = "integer"},
-        {.name = "branch", .title = "identity along the last axis", .datatype = "integer"},
-        {.name = "label",
-         .title = "kind of mode",
-         .datatype = "string",
-         .format = "unstable|trapped|stable|undecided"},
-        {.name = "omega_re", .title = "angular frequency", .unit = rate, .datatype = "number"},
-        {.name = "omega_im", .title = "growth rate", .unit = rate, .datatype = "number"},
-        {.name = "omega_error",
-         .title = "error bar of the complex frequency",
-         .unit = rate,
-         .datatype = "number"},
-        {.name = "confirmed",
-         .title = "computations that agree",
-         .datatype = "string",
-         .description = "names joined by +"},
-    };
-    th_status st = start(folder, "points.csv", points, sizeof points / sizeof points[0],
-                         "growth-rate table, one row per configuration", w->c, &w->points, err);
+    th_journal *journal = NULL;
+    cli_source source = {get, NULL};
+    cli_progress progress;
+    cli_counts counts;
+    long points = 0, wanted;
+    th_status st = th_sweep_size(c, &points, err), closed;
 
     if (st == TH_OK)
-        st = start(folder, "modes.csv", modes, sizeof modes / sizeof modes[0],
-                   "modes of each configuration", w->c, &w->modes, err);
-    return st;
-}
-
-static void put_axes(th_table *table, const th_case *c, const double *value)
-{
-    for (int a = 0; a < c->axes; a++)
-        th_table_put_number(
-            table,
-            value[a] * th_scale_factor(&c->scale, c->setup.shape->key[c->axis[a].key].dimension));
-}
-
-static th_status put_modes(state *w, const th_sweep_point *point, th_error *err)
-{
-    const double rate = th_scale_factor(&w->c->scale, TH_DIM_RATE);
-    th_status st = TH_OK;
-
-    for (int i = 0; st == TH_OK && point->answer != NULL && i < point->answer->count; i++) {
-        const th_mode *m = &point->answer->mode[i];
-        char confirmed[TH_CONFIRMED_SIZE];
-
-        th_confirmed_text(m->confirmed, confirmed);
-        put_axes(w->modes, w->c, point->value);
-        th_table_put_integer(w->modes, i + 1);
-        th_table_put_integer(w->modes, point->branch[i]);
-        th_table_put_text(w->modes, th_label_text(m->label));
-        th_table_put_number(w->modes, m->omega_re * rate);
-        th_table_put_number(w->modes, m->omega_im * rate);
-        th_table_put_number(w->modes, m->omega_error * rate);
-        th_table_put_text(w->modes, confirmed);
-        st = th_table_end_row(w->modes, err);
+        st = cli_make_folder(folder, err);
+    if (st == TH_OK)
+        st = th_journal_open(path, c, points, resume, &journal, err);
+    if (st != TH_OK) {
+        cli_ranks_dismiss();
+        return st;
     }
-    if (st == TH_OK)
-        st = th_table_flush(w->modes, err);
-    return st;
-}
-
-static th_status put_point(state *w, const th_sweep_point *point, th_error *err)
-{
-    const double rate = th_scale_factor(&w->c->scale, TH_DIM_RATE);
-    const th_solution *s = point->answer;
-    th_status st;
-
-    put_axes(w->points, w->c, point->value);
-    if (s == NULL) {
-        for (int i = 0; i < 6; i++)
-            th_table_put_nothing(w->points);
-        th_table_put_text(w->points, "failed");
-    } else {
-        const bool grows = s->unstable > 0;
-
-        th_table_put_number(w->points,
-                            point->horizon_distance * th_scale_factor(&w->c->scale, TH_DIM_LENGTH));
-        if (s->index_known)
-            th_table_put_integer(w->points, s->index);
-        else
-            th_table_put_nothing(w->points);
-        if (s->census_known)
-            th_table_put_integer(w->points, s->census);
-        else
-            th_table_put_nothing(w->points);
-        th_table_put_integer(w->points, s->unstable);
-        th_table_put_number(w->points, grows ? s->mode[0].omega_im * rate : 0.0);
-        if (grows)
-            th_table_put_number(w->points, s->mode[0].omega_re * rate);
-        else
-            th_table_put_nothing(w->points);
-        th_table_put_text(w->points, s->verdict == TH_VERDICT_UNDECIDED ? "undecided" : "ok");
+    wanted = share(c, o);
+    cli_progress_begin(&progress, wanted, th_journal_count(journal));
+    o->done = done;
+    o->ctx = &progress;
+    catch_signals();
+    st = cli_ranks_sweep(c, o, journal, err);
+    cli_progress_end(&progress);
+    source.ctx = journal;
+    if (st == TH_OK && th_journal_count(journal) < wanted) {
+        printf("%ld of %ld points finished; the same command with --resume goes on\n",
+               th_journal_count(journal), wanted);
+        *code = CLI_UNDECIDED;
+    } else if (st == TH_OK) {
+        st = cli_write_tables(c, points, &source, folder, &counts, err);
+        if (st == TH_OK)
+            *code = cli_report_tables(&counts, folder);
     }
-    st = th_table_end_row(w->points, err);
-    return st == TH_OK ? th_table_flush(w->points, err) : st;
-}
-
-static th_status take(void *ctx, const th_sweep_point *point, th_error *err)
-{
-    state *w = ctx;
-    th_status st = put_modes(w, point, err);
-
-    if (st == TH_OK)
-        st = put_point(w, point, err);
-    w->failed += point->answer == NULL;
-    w->undecided += point->answer != NULL && point->answer->verdict == TH_VERDICT_UNDECIDED;
-    w->unstable += point->answer != NULL && point->answer->unstable > 0;
-    if (w->show)
-        fprintf(stderr, "\r%ld of %ld points, %ld unstable", point->number + 1, w->total,
-                w->unstable);
-    if (point->answer == NULL)
-        fprintf(stderr, "%stwinhorizon: point %ld of %ld has no answer: %s\n", w->show ? "\n" : "",
-                point->number + 1, w->total, point->message);
-    return st;
-}
-
-static th_status make_folder(const char *folder, th_error *err)
-{
-    struct stat is;
-
-    if (mkdir(folder, 0777) == 0)
-        return TH_OK;
-    if (errno == EEXIST && stat(folder, &is) == 0 && S_ISDIR(is.st_mode))
-        return TH_OK;
-    return th_fail(err, TH_EIO, "%s: the folder cannot be made (%s)", folder, strerror(errno));
-}
-
-static th_status run(state *w, const char *folder, th_error *err)
-{
-    th_status st = th_sweep_size(w->c, &w->total, err);
-
-    if (st == TH_OK)
-        st = make_folder(folder, err);
-    if (st == TH_OK)
-        st = start_tables(w, folder, err);
-    if (st == TH_OK)
-        st = th_sweep_run(w->c, take, w, err);
-    if (w->show)
-        fputc('\n', stderr);
-    if (st == TH_OK)
-        st = th_table_finish(w->modes, err);
-    if (st == TH_OK)
-        st = th_table_finish(w->points, err);
-    return st;
+    closed = th_journal_close(journal, st == TH_OK ? err : NULL);
+    return st == TH_OK ? closed : st;
 }
 
 int cli_sweep(int argc, char **argv)
 {
-    const char *folder = NULL;
+    const char *folder = NULL, *threads = NULL, *resume = NULL, *part = NULL;
     const cli_option option[] = {
-        {"--out", "DIR", "folder for points.csv and modes.csv; made when missing", &folder},
+        {"--out", "DIR", "folder for the journal and the tables; made when missing", &folder},
+        {"--threads", "N", "threads; default: one for each processor", &threads},
+        {"--resume", NULL, "go on with an interrupted sweep", &resume},
+        {"--part", "K/N", "only the K-th of N shares of the points, for batch systems", &part},
     };
+    th_sweep_options o = {.part = 1, .parts = 1, .stop = &stop};
     cli_arguments arguments;
-    state w = {.show = isatty(STDERR_FILENO) != 0};
     th_case *c = NULL;
+    char *path = NULL;
     th_error err = {0};
     th_status st;
     int code = cli_read("sweep", "Solve every point of the [sweep] axes and write the tables.",
-                        argc, argv, option, 1, &arguments);
+                        argc, argv, option, sizeof option / sizeof option[0], &arguments);
 
     if (code != CLI_DONE)
         return code < 0 ? CLI_DONE : code;
+    o.threads = (int)sysconf(_SC_NPROCESSORS_ONLN);
+    if (o.threads < 1)
+        o.threads = 1;
     if (folder == NULL)
         return cli_usage("sweep: --out DIR is wanted");
-    st = th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err);
-    w.c = c;
-    if (st == TH_OK)
-        st = run(&w, folder, &err);
+    if (threads != NULL && !read_threads(threads, &o.threads))
+        return cli_usage("sweep: --threads %s: want a whole number from 1 to 1024", threads);
+    if (part != NULL && !read_part(part, &o.part, &o.parts))
+        return cli_usage("sweep: --part %s: want K/N with 1 <= K <= N", part);
+    path = cli_join(folder, "journal");
+    st = path != NULL ? th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err)
+                      : th_fail(&err, TH_ENOMEM, "sweep: the name of the journal");
+    if (st == TH_OK && cli_rank() > 0)
+        st = cli_ranks_sweep(c, &o, NULL, &err);
+    else if (st == TH_OK)
+        st = run(c, &o, resume != NULL, folder, path, &code, &err);
     if (st != TH_OK)
-        code = cli_failed(&err);
-    else
-        printf("%ld points: %ld unstable, %ld undecided, %ld failed; tables %s/points.csv and "
-               "%s/modes.csv\n",
-               w.total, w.unstable, w.undecided, w.failed, folder, folder);
-    if (st == TH_OK && w.undecided + w.failed > 0)
-        code = CLI_UNDECIDED;
-    th_table_destroy(w.modes);
-    th_table_destroy(w.points);
+        code = cli_rank() > 0 ? CLI_INTERNAL : cli_failed(&err);
     th_case_destroy(c);
+    free(path);
     return code;
 }

@@ -16,12 +16,19 @@
 #include "alloc.h"
 #include "dispersion.h"
 
-/* Degree of interpolation, and degree by which the coefficients must have died. */
-enum { DEGREE = TH_STEP_TERMS - 1, DEAD_BY = 20 };
-/* Coefficients below this share of the largest have died. */
-static const double dead = 4.0 * DBL_EPSILON;
+/* Degree of interpolation, degree by which the coefficients must have died, and degree from which
+ * on they are noise when they have. */
+enum { DEGREE = TH_STEP_TERMS - 1, DEAD_BY = 20, NOISE_FROM = 24 };
+/* Coefficients below this share of the largest value have died, or below this many times the
+ * noise. Rounding of x is noise too: eps |x| times the slope, more than rounding of the value at
+ * steep edges far from x = 0. More noise than `noisiest` is no rounding. A slow series does not
+ * pass for noise: where it falls by a factor q < 4 a degree, it is still q^4 noise at DEAD_BY. */
+static const double dead = 4.0 * DBL_EPSILON, above_noise = 4.0, noisiest = 1e-12;
 /* Largest |k| half: the series of e^{ikx} then loses at most a factor e^3 to cancellation. */
 static const double usual_kh = 3.0, fine_kh = 2.0;
+/* The same at omega = i c0^2, farther than any mode grows: counts need a few digits there, and
+ * e^20 of cancellation leaves seven. */
+static const double far_kh = 10.0;
 
 typedef struct {
     const th_flow *flow;
@@ -51,7 +58,7 @@ static void prepare(cutter *c)
 /* Values at the nodes -> powers of t; number of terms, 0 when the series has not died. */
 static int expand(const cutter *c, const double *value, double *power)
 {
-    double chebyshev[DEGREE + 1], scale = 0.0;
+    double chebyshev[DEGREE + 1], scale = 0.0, noise = 0.0;
     int terms = 0;
 
     for (int j = 0; j <= DEGREE; j++) {
@@ -61,10 +68,12 @@ static int expand(const cutter *c, const double *value, double *power)
         chebyshev[j] *= (j > 0 ? 2.0 : 1.0) / (DEGREE + 1);
         scale = fmax(scale, fabs(value[j]));
     }
+    for (int j = NOISE_FROM; j <= DEGREE; j++)
+        noise = fmax(noise, fabs(chebyshev[j]));
     for (int j = 0; j <= DEGREE; j++)
-        if (fabs(chebyshev[j]) > dead * scale)
+        if (fabs(chebyshev[j]) > fmax(dead * scale, above_noise * noise))
             terms = j + 1;
-    if (terms > DEAD_BY)
+    if (terms > DEAD_BY || noise > noisiest * scale)
         return 0;
     memset(power, 0, TH_STEP_TERMS * sizeof *power);
     for (int j = 0; j < terms; j++)
@@ -73,17 +82,36 @@ static int expand(const cutter *c, const double *value, double *power)
     return terms > 0 ? terms : 1;
 }
 
+/* Largest half length of a step at a place, by its wave numbers, inverted. */
+static th_status shortness(const cutter *c, const th_flow_point *at, double *shortest,
+                           th_error *err)
+{
+    const double c0 = c->out->speed0;
+    const double complex omega[2] = {c->omega_top, I * c0 * c0};
+    const double kh[2] = {c->kh, far_kh};
+
+    for (int f = 0; f < 2; f++) {
+        double complex k[4];
+        th_status st = th_dispersion_roots(omega[f], at->v, at->c, k, err);
+
+        if (st != TH_OK)
+            return st;
+        for (int i = 0; i < 4; i++)
+            *shortest = fmax(*shortest, cabs(k[i]) / kh[f]);
+    }
+    return TH_OK;
+}
+
 /* Try a step; *yes false when it is too long. */
 static th_status attempt(const cutter *c, int piece, double left, double length, th_step *step,
                          bool *yes, th_error *err)
 {
-    double inverse[DEGREE + 1], density[DEGREE + 1], pressure[DEGREE + 1], k_top = 0.0;
+    double inverse[DEGREE + 1], density[DEGREE + 1], pressure[DEGREE + 1], shortest = 0.0;
     const double n0 = c->out->density0, c0 = c->out->speed0;
     const bool uniform = piece < th_flow_pieces(c->flow) && th_flow_piece_uniform(c->flow, piece);
 
     for (int q = 0; q <= DEGREE; q++) {
         th_flow_point at;
-        double complex k[4];
         th_status st;
 
         th_flow_eval(c->flow, piece, left + 0.5 * length * (1.0 + c->node[q]), &at);
@@ -92,19 +120,17 @@ static th_status attempt(const cutter *c, int piece, double left, double length,
         pressure[q] = density[q] * (at.c / c0) * (at.c / c0);
         if (q > 0 && (uniform || q % 5 != 0))
             continue; /* wave numbers vary no faster than the flow: a few places do */
-        st = th_dispersion_roots(c->omega_top, at.v, at.c, k, err);
+        st = shortness(c, &at, &shortest, err);
         if (st != TH_OK)
             return st;
-        for (int i = 0; i < 4; i++)
-            k_top = fmax(k_top, cabs(k[i]));
     }
     *yes = false;
     step->half = 0.5 * length * c0;
     step->repeat = 1;
     if (uniform) { /* any number of equal steps, one transfer matrix */
-        step->repeat = 1 + (int)fmin(1e6, 0.5 * length * k_top / c->kh);
+        step->repeat = 1 + (int)fmin(1e6, 0.5 * length * shortest);
         step->half /= step->repeat;
-    } else if (0.5 * length * k_top > c->kh) {
+    } else if (0.5 * length * shortest > 1.0) {
         return TH_OK;
     }
     step->inverse_terms = expand(c, inverse, step->inverse);
@@ -152,7 +178,7 @@ static th_status cut(cutter *c, int piece, double left, double right, th_error *
     th_step step;
 
     while (x < right) {
-        bool yes = false;
+        bool yes = false, last = false;
         th_status st = TH_OK;
 
         length = fmin(right - x, 2.5 * length);
@@ -162,7 +188,8 @@ static th_status cut(cutter *c, int piece, double left, double right, th_error *
             if (!(length > 64.0 * DBL_EPSILON * fmax(fabs(left), fabs(right))))
                 return th_fail(err, TH_ECONVERGE,
                                "matching: the flow at x = %g varies too fast to be expanded", x);
-            if (right - x - length < 1e-9 * length)
+            last = right - x - length < 1e-9 * length;
+            if (last)
                 length = right - x;
             st = attempt(c, piece, x, length, &step, &yes, err);
             if (!yes)
@@ -172,7 +199,7 @@ static th_status cut(cutter *c, int piece, double left, double right, th_error *
             st = push(c->out, &step, err);
         if (st != TH_OK)
             return st;
-        x = x + length >= right ? right : x + length;
+        x = last ? right : x + length; /* x + (right - x) may round to less than right */
     }
     return TH_OK;
 }

@@ -451,28 +451,3 @@ void th_mesh_destroy(th_mesh *mesh)
     free(mesh->damping);
     free(mesh);
 }
-
-double th_mesh_band_limit(const th_flow *flow)
-{
-    const double sound = th_flow_sound_max(flow);
-    const int pieces = th_flow_pieces(flow);
-    const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
-    const th_pocket *pocket;
-    const double *edge;
-    double top = 0.0;
-    int pockets, edges;
-
-    pocket = th_flow_pockets(flow, &pockets);
-    edge = th_flow_edges(flow, &edges);
-    for (int i = 0; i < pockets; i++)
-        top = fmax(top, pocket[i].omega_max);
-    for (int i = open ? -1 : 0; i < pieces + (open ? 1 : 0); i++)
-        for (int side = 0; side < 2; side++) {
-            const int at = i < 0 ? 0 : i >= pieces ? pieces : i + side;
-            th_flow_point point;
-
-            th_flow_eval(flow, i, edge[at], &point);
-            top = fmax(top, th_band_top(point.v, point.c));
-        }
-    return top > 0.0 ? top : 0.25 * sound * sound;
-}

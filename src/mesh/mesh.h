@@ -68,11 +68,6 @@ TH_MUST_USE th_status th_mesh_create(const th_flow *flow, const th_mesh_options 
 /** Release a mesh; NULL is allowed. */
 void th_mesh_destroy(th_mesh *mesh);
 
-/** Frequencies up to which a flow can hold negative-energy waves: the top of the band over
- * pockets, edges and ends; where there is no supersonic place, the frequency c^2/4 of waves of
- * about the healing length, so that phonons are listed. Reduced rate, > 0. */
-double th_mesh_band_limit(const th_flow *flow);
-
 /* More would need matrices beyond the reach of a dense eigensolver by far (order 14: 112 000
  * unknowns). */
 enum { TH_MESH_ELEMENTS_MAX = 4000 };

@@ -6,8 +6,8 @@
  * A new label is one more branch in label_of; a new reason for doubt one more in doubt.
  * Proof: tests/test_modes.c. */
 #include "modes/solver.h"
+#include "modes/polish.h"
 
-#include <float.h>
 #include <gsl/gsl_math.h>
 #include <stdlib.h>
 #include <string.h>
@@ -20,9 +20,6 @@ static const double agreement = 3.0;
 /* A mode is looked for this far from the matrix's value, relative to |omega|, or within this many
  * of its error bars. */
 static const double polish_reach = 1e-4, polish_bars = 100.0;
-/* Rounding of the matching function's root, in units of the largest frequency at hand. Measured
- * against 30-digit roots of steps: below 3. */
-static const double rounding = 8.0 * DBL_EPSILON;
 
 bool th_solver_conserving(const th_solver *w)
 {
@@ -93,19 +90,16 @@ static bool polish(const th_solver *w, th_mode *m)
 {
     const double complex from = th_mode_omega(m);
     const double reach = fmax(polish_reach * cabs(from), polish_bars * m->omega_error);
-    double re[2] = {m->omega_re, m->omega_re}, im[2] = {m->omega_im, m->omega_im}, last[2];
+    double complex root;
     double error, shift;
 
-    if (th_matching_polish(w->usual, reach, &re[0], &im[0], &last[0], NULL) != TH_OK ||
-        th_matching_polish(w->fine, reach, &re[1], &im[1], &last[1], NULL) != TH_OK)
+    if (th_polish(w->usual, w->fine, w->s->omega_top, from, reach, &root, &error) != TH_OK)
         return false;
-    error = 2.0 * (hypot(re[0] - re[1], im[0] - im[1]) + fmax(last[0], last[1])) +
-            rounding * fmax(cabs(from), w->s->omega_top);
-    shift = hypot(re[1] - m->omega_re, im[1] - m->omega_im);
+    shift = cabs(root - from);
     if (shift > agreement * (m->omega_error + error))
         return false;
-    m->omega_re = re[1];
-    m->omega_im = im[1];
+    m->omega_re = creal(root);
+    m->omega_im = cimag(root);
     m->shift = (m->confirmed & TH_BY_MATRIX) != 0 ? shift : 0.0;
     m->omega_error = error;
     m->confirmed |= TH_BY_MATCHING;
@@ -288,7 +282,7 @@ static void doubt(const th_solver *w, char *reason, size_t size)
     else if (th_solver_conserving(w) && s->census_known && w->neutral != w->census.neutral)
         (void)snprintf(reason, size, "the matrix has %d neutral modes, the census counts %d",
                        w->neutral, w->census.neutral);
-    else if (w->unmatched > 0)
+    else if (w->unmatched > 0 && !s->census_known)
         (void)snprintf(reason, size,
                        "%d growing eigenvalues of the first matrix are not found in the second",
                        w->unmatched);

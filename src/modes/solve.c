@@ -85,7 +85,7 @@ th_status th_solve(const th_flow *flow, const th_solve_options *options, th_solu
     w.s = th_alloc(1, sizeof *w.s);
     if (w.s == NULL)
         return th_fail(err, TH_ENOMEM, "solve: one object");
-    w.s->omega_top = th_mesh_band_limit(flow);
+    w.s->omega_top = th_flow_band_limit(flow);
     st = run(&w, err);
     for (int i = 0; i < TH_LEVELS; i++)
         th_level_clear(&w.level[i]);
@@ -116,7 +116,7 @@ th_status th_matrix_write(const th_flow *flow, const th_solve_options *options, 
 
     if (st != TH_OK)
         return st;
-    top = th_mesh_band_limit(flow);
+    top = th_flow_band_limit(flow);
     st = th_level_create(flow, TH_LEVEL_FINE, options->accuracy, top, th_matrix_reach(0) * top,
                          &fine, err);
     if (st == TH_OK)

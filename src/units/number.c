@@ -168,7 +168,7 @@ th_status th_number_scan(const char *text, const char **end, double *value, th_e
         return th_fail(err, TH_EINVAL, "\"%s\" is not a decimal number", shown);
     if (!isfinite(number))
         return th_fail(err, TH_EINVAL, "\"%s\" is too large a number", shown);
-    if (trouble == ERANGE)
+    if (trouble == ERANGE && number == 0.0) /* also set for subnormal numbers, which are fine */
         return th_fail(err, TH_EINVAL, "\"%s\" is too small a number", shown);
     *value = number;
     *end = stop;

@@ -1,10 +1,10 @@
 /* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
- * Identity of modes along one axis of a sweep. In: the answers of a line of points, in order. Out:
- * a branch number for each mode. Calls modes' types only.
+ * Identity of modes along one axis of a sweep. In: the points of a line, in order. Out:
+ * a branch number for each mode. Calls nobody.
  * Symbols: re, im frequency; dre, dim its last step. Proof: tests/test_sweep.c. */
-#include "branches.h"
+#include "twinhorizon/sweep.h"
 
 #include <math.h>
 #include <stdlib.h>
@@ -43,12 +43,12 @@ void th_branches_clear(th_branches *line)
     memset(line, 0, sizeof *line);
 }
 
-th_status th_branches_next(th_branches *line, const th_solution *answer, double reach, int *branch,
+th_status th_branches_next(th_branches *line, const th_point *point, double reach, int *branch,
                            th_error *err)
 {
     th_status st = TH_EBUG;
-    const size_t n = (size_t)answer->count, m = (size_t)line->count;
-    th_branches next = {.count = answer->count, .last = line->last};
+    const size_t n = (size_t)point->count, m = (size_t)line->count;
+    th_branches next = {.count = point->count, .last = line->last};
     pairing *pair = th_alloc(n * m, sizeof *pair);
     int *from = th_alloc(n, sizeof *from); /* [n] 1 + index at the previous point, 0 when new */
     int *taken = th_alloc(m, sizeof *taken);
@@ -61,13 +61,13 @@ th_status th_branches_next(th_branches *line, const th_solution *answer, double 
     next.dim = th_alloc(n, sizeof *next.dim);
     if (pair == NULL || from == NULL || taken == NULL || next.branch == NULL || next.re == NULL ||
         next.im == NULL || next.dre == NULL || next.dim == NULL) {
-        st = th_fail(err, TH_ENOMEM, "sweep: branches of %d modes", answer->count);
+        st = th_fail(err, TH_ENOMEM, "sweep: branches of %d modes", point->count);
         goto done;
     }
     for (size_t j = 0; j < m; j++)
         for (size_t i = 0; i < n; i++) {
-            const double apart = hypot(answer->mode[i].omega_re - line->re[j] - line->dre[j],
-                                       answer->mode[i].omega_im - line->im[j] - line->dim[j]);
+            const double apart = hypot(point->mode[i].omega_re - line->re[j] - line->dre[j],
+                                       point->mode[i].omega_im - line->im[j] - line->dim[j]);
 
             if (apart <= reach)
                 pair[pairs++] = (pairing){apart, (int)j, (int)i};
@@ -82,8 +82,8 @@ th_status th_branches_next(th_branches *line, const th_solution *answer, double 
     for (size_t i = 0; i < n; i++) {
         const int j = from[i] - 1;
 
-        next.re[i] = answer->mode[i].omega_re;
-        next.im[i] = answer->mode[i].omega_im;
+        next.re[i] = point->mode[i].omega_re;
+        next.im[i] = point->mode[i].omega_im;
         next.branch[i] = j >= 0 ? line->branch[j] : ++next.last;
         next.dre[i] = j >= 0 ? next.re[i] - line->re[j] : 0.0;
         next.dim[i] = j >= 0 ? next.im[i] - line->im[j] : 0.0;
