@@ -134,10 +134,14 @@ static char *bytes_of_file(size_t *length)
     return bytes;
 }
 
+/* A new file with these bytes: some file systems write to the disk at once when an old one is
+ * shortened and filled again, and that takes long. */
 static void put_file(const char *bytes, size_t length)
 {
-    FILE *file = fopen(path, "wb");
+    FILE *file;
 
+    (void)unlink(path);
+    file = fopen(path, "wb");
     assert_non_null(file);
     assert_int_equal(fwrite(bytes, 1, length, file), length);
     assert_int_equal(fclose(file), 0);
@@ -454,9 +458,11 @@ static void test_every_byte(void **state)
     for (size_t at = 0; at < length; at++) {
         long whole = 0;
 
-        bytes[at] ^= 1 << (at % 8);
+        const char kept = bytes[at];
+
+        bytes[at] = (char)(kept ^ 1 << at % 8);
         put_file(bytes, length);
-        bytes[at] ^= 1 << (at % 8);
+        bytes[at] = kept;
         if (at < start[0]) {
             assert_refused(POINTS, true, TH_EINVAL, &err);
             assert_int_equal(file_size(), length);
@@ -624,21 +630,27 @@ static void test_arguments(void **state)
 /* A file that changed under an open journal is noticed when the point is read. */
 static void test_changed_beneath(void **state)
 {
-    size_t start[3], length;
-    char *bytes = small_journal(2, start, &length);
-    th_journal *journal = open_journal(POINTS, true);
+    th_journal *journal = open_journal(POINTS, false);
     th_point point = {0};
     th_error err = {0};
+    FILE *file;
+    long end;
 
     (void)state;
-    bytes[start[1] + 4] ^= 1;
-    put_file(bytes, length);
+    append(journal, 1);
+    end = (long)file_size();
+    append(journal, 0);
+    file = fopen(path, "r+b");
+    assert_non_null(file);
+    assert_int_equal(fseek(file, end - 2, SEEK_SET),
+                     0); /* in the checksum: the point still reads */
+    assert_int_equal(fputc('?', file), '?');
+    assert_int_equal(fclose(file), 0);
     assert_int_equal(th_journal_get(journal, 1, &point, &err), TH_EIO);
     assert_says(&err, "point 1 at byte");
     assert_holds(journal, 0);
     close_journal(journal);
     th_point_clear(&point);
-    free(bytes);
 }
 
 /* In another process: what opening gives. */
@@ -783,11 +795,16 @@ static void test_fsync(void **state)
     for (long i = 0; i < 20; i++)
         append(journal, i);
     assert_true(until_fsync(before) < 1.0);
-    before = fsyncs;
+    assert_in_range(fsyncs, before + 1, before + 3); /* 1 unless the machine is very busy */
     append(journal, 20);
-    assert_true(fsyncs <= before + 1);
+    before = fsyncs;
     close_journal(journal);
     assert_true(fsyncs > before);
+    for (int k = 0; k < 50; k++) { /* even before the thread has begun: folder and file */
+        before = fsyncs;
+        close_journal(open_journal(POINTS, true));
+        assert_true(fsyncs >= before + 2);
+    }
 }
 
 /* When the disk takes nothing any more, the caller hears of it, and what was read stays readable.

@@ -268,7 +268,7 @@ static void expect_count(th_flow *flow, int want)
     th_solution *s = solve_to(flow, 1e-6);
 
     if (s->verdict == TH_VERDICT_UNDECIDED)
-        fail_msg("undecided: %s", s->reason);
+        fail_msg("undecided, %d expected: %s", want, s->reason);
     assert_int_equal(s->index, want);
     assert_int_equal(s->unstable, want);
     assert_int_equal(s->verdict, want > 0 ? TH_VERDICT_UNSTABLE : TH_VERDICT_STABLE);
@@ -702,12 +702,6 @@ static void test_errors(void **state)
     }
     th_solution_destroy(NULL);
     th_flow_destroy(flow);
-    /* a pocket of a million half turns: too large for a dense matrix, and said so */
-    o.accuracy = 1e-9;
-    flow = step_flow(1, 1.5, 0.5, 1.5, 2e4);
-    assert_int_equal(th_solve(flow, &o, &s, &err), TH_EUNDECIDED);
-    assert_null(s);
-    th_flow_destroy(flow);
 }
 
 static void test_refused(void **state)
@@ -717,7 +711,8 @@ static void test_refused(void **state)
     long refused = 0;
 
     (void)state;
-    for (long k = 0;; k++) {
+    /* every one of the first 40, then more and more sparsely: a call makes hundreds */
+    for (long k = 0;; k += 1 + (k > 40 ? k / 6 : 0)) {
         th_solution *s = NULL;
         th_error err = {0};
         th_status st;

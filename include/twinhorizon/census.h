@@ -33,9 +33,10 @@ typedef struct {
 
 /**
  * Upper bound on the growth rate of any mode: the smaller of max c^2 and the largest of -v' and
- * v c'/c plus, for jumps of c^2 that rise along the flow, the sum of v (c_+^2 - c_-^2)/(2 c_min).
- * Derived in DEVELOPERS.md ("Growth bound"). Smooth flows are sampled densely and the result is
- * taken two per cent larger.
+ * v c'/c plus, for jumps of c^2 that rise along the flow, J Sum (c_+^2 - c_-^2) / (2 min n c); on a
+ * ring the last term over tanh(circumference min c). Between walls, and where v jumps, max c^2
+ * alone. Derived in DEVELOPERS.md ("Growth bound"). Smooth flows are sampled densely and the result
+ * is taken two per cent larger.
  */
 double th_growth_bound(const th_flow *flow);
 

@@ -2,77 +2,92 @@
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
  * The bound on growth rates that makes the census' region finite. In: a flow. Out: a rate. Calls
- * flow. Derivation: DEVELOPERS.md, "Growth bound". Proof: tests/test_census.c. */
+ * flow. Derivation and symbols: DEVELOPERS.md, "Growth bound". Proof: tests/test_census.c. */
 #include <gsl/gsl_math.h>
+#include <stdbool.h>
 #include <stddef.h>
 
 #include "twinhorizon/census.h"
 
 enum { SAMPLES = 400 }; /* per piece and per feature */
 static const double margin = 1.02;
+/* v differs by more than this, relatively, on the sides of an edge: it jumps. */
+static const double speed_jump = 1e-8;
 
-/* Largest of -v' and v c'/c at a place. */
-static double local_rate(const th_flow *flow, int piece, double x)
+typedef struct {
+    double rate;  /* largest of -v' and v c'/c */
+    double c, nc; /* smallest c and n c */
+    double rise;  /* sum of the rises of c^2 at jumps, along the flow */
+    bool breaks;  /* v jumps somewhere */
+} findings;
+
+static void take(const th_flow *flow, int piece, double x, findings *f)
 {
     th_flow_point at;
 
     th_flow_eval(flow, piece, x, &at);
-    return fmax(-at.dv, at.v * at.dc / at.c);
+    f->rate = fmax(f->rate, fmax(-at.dv, at.v * at.dc / at.c));
+    f->c = fmin(f->c, at.c);
+    f->nc = fmin(f->nc, at.n * at.c);
 }
 
-static double smooth_rate(const th_flow *flow)
+static void take_pieces(const th_flow *flow, findings *f)
 {
     const th_feature *feature;
     const double *edge;
-    double top = 0.0;
     int edges, features;
 
     edge = th_flow_edges(flow, &edges);
     feature = th_flow_features(flow, &features);
     for (int i = 0; i + 1 < edges; i++) {
-        if (th_flow_piece_uniform(flow, i))
-            continue;
-        for (int q = 0; q <= SAMPLES; q++)
-            top = fmax(top, local_rate(flow, i, edge[i] + (edge[i + 1] - edge[i]) * q / SAMPLES));
-        for (int f = 0; f < features; f++)
+        const int samples = th_flow_piece_uniform(flow, i) ? 1 : SAMPLES;
+
+        for (int q = 0; q <= samples; q++)
+            take(flow, i, edge[i] + (edge[i + 1] - edge[i]) * q / samples, f);
+        for (int j = 0; samples > 1 && j < features; j++)
             for (int q = 0; q <= SAMPLES; q++) {
-                const double x = feature[f].x + feature[f].width * 5.0 * (2.0 * q / SAMPLES - 1.0);
+                const double x = feature[j].x + feature[j].width * 5.0 * (2.0 * q / SAMPLES - 1.0);
 
                 if (x >= edge[i] && x <= edge[i + 1])
-                    top = fmax(top, local_rate(flow, i, x));
+                    take(flow, i, x, f);
             }
     }
-    return top;
 }
 
-/* Jumps of c^2 that rise along the flow; on a ring the seam is an edge too. */
-static double jump_rate(const th_flow *flow)
+/* Edges; on a ring the seam is one too. */
+static void take_edges(const th_flow *flow, findings *f)
 {
-    const th_ends_kind ends = th_flow_ends(flow).kind;
+    const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
     const double *edge;
-    double sum = 0.0;
     int edges;
 
     edge = th_flow_edges(flow, &edges);
-    for (int i = ends == TH_ENDS_OPEN ? 0 : 1; i < edges; i++) {
+    for (int i = open ? 0 : 1; i < edges; i++) {
+        const bool seam = !open && i == edges - 1;
         th_flow_point l, r;
 
-        if (i == edges - 1 && ends == TH_ENDS_WALLS)
-            continue;
         th_flow_eval(flow, i - 1, edge[i], &l);
-        if (i == edges - 1 && ends == TH_ENDS_RING)
-            th_flow_eval(flow, 0, edge[0], &r);
-        else
-            th_flow_eval(flow, i, edge[i], &r);
-        if (r.c > l.c)
-            sum += fmax(l.v, r.v) * (r.c * r.c - l.c * l.c) / (2.0 * l.c);
+        th_flow_eval(flow, seam ? 0 : i, edge[seam ? 0 : i], &r);
+        f->c = fmin(f->c, fmin(l.c, r.c));
+        f->nc = fmin(f->nc, fmin(l.n * l.c, r.n * r.c));
+        f->rise += fmax(0.0, r.c * r.c - l.c * l.c);
+        f->breaks = f->breaks || fabs(r.v - l.v) > speed_jump * l.v;
     }
-    return sum;
 }
 
 double th_growth_bound(const th_flow *flow)
 {
     const double sound = th_flow_sound_max(flow);
+    const th_ends ends = th_flow_ends(flow);
+    findings f = {.c = sound, .nc = HUGE_VAL};
+    double jumps;
 
-    return margin * fmin(sound * sound, smooth_rate(flow) + jump_rate(flow));
+    take_pieces(flow, &f);
+    take_edges(flow, &f);
+    if (ends.kind == TH_ENDS_WALLS || f.breaks) /* the energy estimate does not hold */
+        return margin * sound * sound;
+    jumps = th_flow_flux(flow) * f.rise / (2.0 * f.nc);
+    if (ends.kind == TH_ENDS_RING)
+        jumps /= tanh(f.c * ends.circumference);
+    return margin * fmin(sound * sound, f.rate + jumps);
 }

@@ -15,16 +15,17 @@
 
 #include "alloc.h"
 
-/* Two roots closer than this, relative, are one: polished roots are good to 1e-14. So are two
- * closer than this many times the last step of their polishing: slow modes of flows close to v = c
- * are known less well. */
-static const double same_root = 1e-10, same_steps = 100.0;
+/* Two roots closer than this, relative, are one: polished roots are good to 1e-14. */
+static const double same_root = 1e-10;
 /* A root this close to the imaginary axis, relative, lies on it. */
 static const double on_axis = 1e-11;
+/* The same for slow modes, whose rounding is relative to c^2: up to 3e-12 was seen. */
+static const double slow_noise = 1e-11;
 enum { CUTS = 40, HEIGHTS = 12, ACROSS = 4 };
 
 typedef struct {
     const th_matching *matching;
+    double rate; /* c^2 */
     th_region *region;
     double complex *root; /* [count] Re >= 0, Im > 0 */
     int count, room;
@@ -46,13 +47,12 @@ static int found_between(const search *s, double from, double to)
     return sum;
 }
 
-/* `last` is the last step of the root's polishing. */
-static th_status add(search *s, double complex root, double last, th_error *err)
+static th_status add(search *s, double complex root, th_error *err)
 {
     const th_census *c = &s->region->census;
-    const double same = fmax(same_root * cabs(root), same_steps * last);
+    const double noise = slow_noise * s->rate;
 
-    if (fabs(creal(root)) <= on_axis * cabs(root))
+    if (fabs(creal(root)) <= fmax(on_axis * cabs(root), noise))
         root = I * cimag(root);
     if (creal(root) < 0.0)
         root = -conj(root);
@@ -60,7 +60,7 @@ static th_status add(search *s, double complex root, double last, th_error *err)
         cabs(root) <= c->slowest)
         return TH_OK;
     for (int i = 0; i < s->count; i++)
-        if (cabs(s->root[i] - root) <= same)
+        if (cabs(s->root[i] - root) <= fmax(same_root * cabs(root), noise))
             return TH_OK;
     if (s->count == s->room) {
         int room = s->room > 0 ? 2 * s->room : 64;
@@ -82,7 +82,7 @@ static th_status try_from(search *s, double complex start, double reach, th_erro
 
     if (th_matching_polish(s->matching, reach, &re, &im, &last, NULL) != TH_OK)
         return TH_OK;
-    return add(s, re + I * im, last, err);
+    return add(s, re + I * im, err);
 }
 
 /* Start where |F/F'| is smallest along a path: there a mode is close. */
@@ -243,6 +243,7 @@ th_status th_census_find(const th_flow *flow, const th_matching *matching, doubl
     if (th_flow_ends(flow).kind != TH_ENDS_OPEN)
         return th_fail(err, TH_EINVAL, "census: modes are found for open ends only");
     st = th_region_count(flow, matching, omega_top, &region, err);
+    s.rate = th_flow_sound_max(flow) * th_flow_sound_max(flow);
     if (st == TH_OK)
         st = search_all(&s, err);
     *out = region.census;

@@ -86,6 +86,18 @@ const char *cli_unit(const th_case *c, th_dimension dimension);
 /* Flow, horizons and pockets in a few lines. */
 void cli_print_flow(const th_case *c, const th_flow *flow, bool details);
 
+/* ---- flow.c --------------------------------------------------------------------------------- */
+
+/* The stretch that tables and pictures show: from edge to edge, beyond open ends a quarter of that
+ * length more on each side. */
+void cli_window(const th_flow *flow, double *from, double *to);
+
+/* ---- modes_file.c --------------------------------------------------------------------------- */
+
+/* Write the shapes of all modes of a solution as an HDF5 file. */
+th_status cli_modes_write(const th_case *c, const th_flow *flow, const th_solution *s,
+                          const char *path, th_error *err) TH_MUST_USE;
+
 /* ---- sensitivity.c -------------------------------------------------------------------------- */
 
 /* Print d omega / d key of every growing mode. */

@@ -40,6 +40,17 @@ static void put_row(th_table *table, const th_case *c, const th_flow *flow, cons
                         th_flow_potential(flow, &p) * th_scale_factor(&c->scale, TH_DIM_ENERGY));
 }
 
+void cli_window(const th_flow *flow, double *from, double *to)
+{
+    int edges;
+    const double *edge = th_flow_edges(flow, &edges);
+    const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
+    const double margin = open ? 0.25 * (edge[edges - 1] - edge[0]) : 0.0;
+
+    *from = edge[0] - margin;
+    *to = edge[edges - 1] + margin;
+}
+
 /* Places in ascending order; [count] to be freed by the caller. */
 static place *choose_places(const th_flow *flow, int *count)
 {
@@ -47,19 +58,19 @@ static place *choose_places(const th_flow *flow, int *count)
     const double *edge;
     const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
     int edges, features, used = 0;
-    double margin;
+    double first, last;
     place *list;
 
     edge = th_flow_edges(flow, &edges);
     feature = th_flow_features(flow, &features);
-    margin = open ? 0.25 * (edge[edges - 1] - edge[0]) : 0.0;
+    cli_window(flow, &first, &last);
     list = malloc(((size_t)(edges + 1) * (EVEN + 1) + (size_t)(edges + features) * (AROUND + 1)) *
                   sizeof *list);
     if (list == NULL)
         return NULL;
     for (int piece = open ? -1 : 0; piece < edges - (open ? 0 : 1); piece++) {
-        const double from = piece < 0 ? edge[0] - margin : edge[piece];
-        const double to = piece == edges - 1 ? edge[edges - 1] + margin : edge[piece + 1];
+        const double from = piece < 0 ? first : edge[piece];
+        const double to = piece == edges - 1 ? last : edge[piece + 1];
         const bool outside = piece < 0 || piece == edges - 1;
         const int parts = outside || th_flow_piece_uniform(flow, piece) ? AROUND : EVEN;
 

@@ -19,7 +19,8 @@ static const struct {
     {"solve", "modes, growth rates and verdict of one configuration", cli_solve},
     {"sweep", "growth-rate table over the axes of a case", cli_sweep},
     {"merge", "tables of a sweep that was run in parts", cli_merge},
-    {"onset", "pocket lengths at which modes switch on, alone or over the axes of a case", cli_onset},
+    {"onset", "pocket lengths at which modes switch on, alone or over the axes of a case",
+     cli_onset},
     {"flow", "the stationary flow: horizons, pockets, the potential it needs", cli_flow},
 };
 enum { COMMANDS = sizeof command / sizeof command[0] };

@@ -1,7 +1,8 @@
 /* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
- * twinhorizon solve CASE: verdict, flow and modes as text, modes as a table, the matrix as a file.
+ * twinhorizon solve CASE: verdict, flow and modes as text, modes as a table, their shapes and the
+ * matrix as files.
  * A new column of the table is one line of `column` and one put in put_mode. */
 #include <gsl/gsl_math.h>
 #include <string.h>
@@ -215,9 +216,10 @@ static void print_all(const th_case *c, const th_flow *flow, const th_solution *
 
 int cli_solve(int argc, char **argv)
 {
-    const char *csv = NULL, *matrix = NULL, *sensitivity = NULL;
+    const char *csv = NULL, *modes = NULL, *matrix = NULL, *sensitivity = NULL;
     const cli_option option[] = {
         {"--csv", "FILE", "table of the modes; - for standard output", &csv},
+        {"--modes", "FILE.h5", "shapes of the modes along the flow, HDF5", &modes},
         {"--matrix", "FILE.mtx",
          "the matrix A in Matrix Market form; omega = i eigenvalue, "
          "reduced units",
@@ -233,7 +235,7 @@ int cli_solve(int argc, char **argv)
     bool only_table;
     int code =
         cli_read("solve", "Find the modes of one configuration and say whether it is stable.", argc,
-                 argv, option, 3, &arguments);
+                 argv, option, sizeof option / sizeof option[0], &arguments);
 
     if (code != CLI_DONE)
         return code < 0 ? CLI_DONE : code;
@@ -249,6 +251,8 @@ int cli_solve(int argc, char **argv)
         st = th_solve(flow, &(th_solve_options){.accuracy = c->accuracy}, &s, &err);
     if (st == TH_OK && csv != NULL)
         st = write_table(c, s, csv, &err);
+    if (st == TH_OK && modes != NULL)
+        st = cli_modes_write(c, flow, s, modes, &err);
     if (st == TH_OK && !only_table)
         print_all(c, flow, s);
     if (st == TH_OK && sensitivity != NULL)

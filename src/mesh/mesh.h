@@ -53,9 +53,9 @@ typedef struct {
  * the places where they start), (2) it is no longer than a
  * few times the width of, or distance to, every feature, (3) the Legendre series of n and c^2 on
  * it have converged. Outside a subsonic open end: complex scaling on elements that grow by
- * a factor of three until waves of omega_low have died. Outside a supersonic open end, where
- * outgoing waves have wave numbers of both signs and no rotation suits all of them: an absorbing
- * layer with a smooth onset on unrotated elements.
+ * a factor of three until waves of omega_low have died. Outside a supersonic open end, where no
+ * rotation damps all outgoing waves and no incoming one: an absorbing layer with a smooth onset on
+ * unrotated elements.
  *
  * @retval TH_EINVAL     an option breaks its rule
  * @retval TH_ECONVERGE  the flow is too rough: an element would be shorter than rounding allows
