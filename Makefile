@@ -27,11 +27,15 @@ SONAME  := libtwinhorizon.so.$(firstword $(subst ., ,$(VERSION)))
 
 # ---- what must be installed: the only list ---------------------------------------------------
 # Debian packages, and for other systems the same in words with the oldest version tried.
-RUN_PACKAGES    := make gcc libc6-dev pkg-config liblapacke-dev libopenblas-dev libgsl-dev libinih-dev
-TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath git
+RUN_PACKAGES    := make gcc libc6-dev pkg-config liblapacke-dev libopenblas-dev libgsl-dev libinih-dev \
+                   libhdf5-dev
+TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath python3-h5py \
+                   octave git
 AUTHOR_PACKAGES := clang clang-format cppcheck shellcheck valgrind
-RUN_WORDS       := make 4.3, gcc 12 or clang 14, pkg-config, LAPACKE 3.11, OpenBLAS 0.3.21, GSL 2.7, inih 55
-TEST_WORDS      := cmocka 1.1.5, python 3.11 with numpy 1.24, scipy 1.10 and mpmath 1.2, git
+RUN_WORDS       := make 4.3, gcc 12 or clang 14, pkg-config, LAPACKE 3.11, OpenBLAS 0.3.21, GSL 2.7, inih 55, \
+                   HDF5 1.10.8 with its high-level library
+TEST_WORDS      := cmocka 1.1.5, python 3.11 with numpy 1.24, scipy 1.10, mpmath 1.2 and h5py 3.7, \
+                   Octave 7.3, git
 AUTHOR_WORDS    := clang 14, clang-format 14, cppcheck 2.10, shellcheck 0.9, valgrind 3.19
 
 # $(call install,packages,words,needed commands)
@@ -45,6 +49,9 @@ WARNINGS := -Wall -Wextra -Wpedantic -Wshadow -Wconversion -Wstrict-prototypes \
 PKG_CFLAGS = $(eval PKG_CFLAGS := $(shell pkg-config --cflags lapacke openblas gsl inih))$(PKG_CFLAGS)
 LIBS       = $(eval LIBS := $(filter-out -lgslcblas -lm,$(shell pkg-config --libs gsl lapacke \
              openblas inih)) -pthread -lm)$(LIBS)
+# HDF5 is for the program alone: users of the library need none.
+HDF5_CFLAGS = $(eval HDF5_CFLAGS := $(shell pkg-config --cflags hdf5))$(HDF5_CFLAGS)
+HDF5_LIBS   = $(eval HDF5_LIBS := -lhdf5_hl $(shell pkg-config --libs hdf5))$(HDF5_LIBS)
 COMPILE    = $(CC) $(LANGUAGE) $(WARNINGS) $(CFLAGS) -fPIC -MMD -MP $(INCLUDES) $(PKG_CFLAGS) -c
 LINK       = $(CC) $(CFLAGS) $(LDFLAGS)
 SAY        = $(if $(V),,@echo "  $@"; )
@@ -76,6 +83,7 @@ all: $(ARCHIVE) $(SHARED) $(PROGRAM)
 # ---- building --------------------------------------------------------------------------------
 # The program sees public headers only; library and tests also see private ones.
 $(CLI_OBJECTS): INCLUDES := -Iinclude
+$(BUILD)/src/cli/modes_file.o: INCLUDES = -Iinclude $(HDF5_CFLAGS)
 ifeq ($(MPI),1)
 $(BUILD)/src/cli/ranks.o: INCLUDES := -Iinclude -DTH_WITH_MPI $(shell pkg-config --cflags ompi-c)
 $(PROGRAM): MORE_LIBS = $(shell pkg-config --libs ompi-c)
@@ -95,7 +103,7 @@ $(SHARED): $(LIB_OBJECTS) src/twinhorizon.map
 	    -Wl,--version-script=src/twinhorizon.map $(LIB_OBJECTS) $(LIBS) -o $@
 
 $(PROGRAM): $(CLI_OBJECTS) $(ARCHIVE)
-	$(SAY)$(LINK) $^ $(LIBS) $(MORE_LIBS) -o $@
+	$(SAY)$(LINK) $^ $(LIBS) $(HDF5_LIBS) $(MORE_LIBS) -o $@
 
 # A test that includes refuse.h stands between the library and its allocator.
 $(BUILD)/tests/test_%: $(BUILD)/tests/test_%.o $(ARCHIVE)

@@ -41,30 +41,24 @@ static th_status check(const th_flow *flow, const th_solve_options *options, dou
     return TH_OK;
 }
 
-/* The eigenpair next to omega, on a level whose ends resolve it: while there is none, the ends move
- * outwards, as in th_solve. */
+/* The eigenpair next to omega, on a level whose ends resolve it. */
 static th_status find_pair(const th_flow *flow, double accuracy, double complex omega,
                            th_level *level, th_eigenpair *pair, th_error *err)
 {
     const double top = th_flow_band_limit(flow);
-    th_status st = TH_ENONE;
     int attempt = 0;
+    th_status st;
 
     while (th_matrix_reach(attempt + 1) > 0.0 && th_matrix_reach(attempt) * top > cabs(omega))
         attempt++;
-    for (; (st == TH_ENONE || st == TH_ECONVERGE) && th_matrix_reach(attempt) > 0.0; attempt++) {
-        th_eigenpair_clear(pair);
-        th_level_clear(level);
-        st = th_level_create(flow, TH_LEVEL_CHECK, accuracy, fmax(top, fabs(creal(omega))),
-                             th_matrix_reach(attempt) * top, level, err);
-        if (st != TH_OK)
-            break;
+    st = th_level_create(flow, TH_LEVEL_CHECK, accuracy, fmax(top, fabs(creal(omega))),
+                         th_matrix_reach(attempt) * top, level, err);
+    if (st == TH_OK)
         st = th_spectrum_refine(level->op, omega, pair, err);
-        if (st == TH_OK && cabs(pair->omega - omega) > same_mode * cabs(omega))
-            st = th_fail(err, TH_ENONE,
-                         "profile: the matrix has no mode at omega = %g%+gi; %g%+gi is nearest",
-                         creal(omega), cimag(omega), creal(pair->omega), cimag(pair->omega));
-    }
+    if (st == TH_OK && cabs(pair->omega - omega) > same_mode * cabs(omega))
+        st = th_fail(err, TH_ENONE,
+                     "profile: the matrix has no mode at omega = %g%+gi; %g%+gi is nearest",
+                     creal(omega), cimag(omega), creal(pair->omega), cimag(pair->omega));
     return st;
 }
 

@@ -31,11 +31,14 @@ census:   matching
 index:    mesh lapack
 index_closed: index
 modes:    spectrum census index
-onset:    index case
-branches: modes alloc
-sweep:    branches case
-plan:     sweep onset
-cli:      plan sweep onset modes case flow table version
+sensitivity: matching
+profile:  modes
+point:    modes
+journal:  case point
+parallel: alloc status
+sweep:    journal parallel buffer io_error version
+onset:    modes case parallel
+cli:      sweep onset profile sensitivity table version
 '
 
 number=0 bad=0

@@ -161,7 +161,7 @@ def check_solve(folder):
     metadata_of(out, MODE_COLUMNS, ("shape = step", "gap = 5"), None)
 
     exits("an SI case ends with 0", 0, "solve", si, "--csv", out, "--set", "flow.gap=9 um", lines=0)
-    metadata_of(out, MODE_COLUMNS, ("system = SI", "gap = 9 um", "accuracy"), "1/s")
+    metadata_of(out, MODE_COLUMNS, ("system = SI", "gap = 9 um"), "1/s")
 
     exits("--help ends with 0", 0, "solve", "--help", lines=0)
     exits("no case", 2, "solve", says=["case file"])
@@ -200,7 +200,7 @@ def check_solve(folder):
     readonly = os.path.join(folder, "readonly")
     os.mkdir(readonly)
     os.chmod(readonly, stat.S_IRUSR | stat.S_IXUSR)
-    if os.access(readonly, os.W_OK): # root may write anywhere
+    if os.access(readonly, os.W_OK):  # root may write anywhere
         check("a read-only folder # SKIP this user may write everywhere", True)
     else:
         exits("a read-only folder", 2, "solve", step, "--csv", os.path.join(readonly, "x.csv"))

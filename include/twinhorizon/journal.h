@@ -31,7 +31,8 @@ typedef struct th_journal th_journal;
  * case (the text names the first line of the case that differs, old and new)
  * @retval TH_EIO     exists although resume is false (the text says that --resume continues it),
  *                    cannot be written, or another process holds it
- * A last line that was cut short or whose checksum fails is dropped with all after it.
+ * A last line that was cut short or whose checksum fails is dropped with all after it. A file that
+ * ends inside its head, where this sweep's head would stand, held no point yet and begins anew.
  */
 TH_MUST_USE th_status th_journal_open(const char *path, const th_case *c, long points, bool resume,
                                       th_journal **out, th_error *err);
@@ -49,14 +50,17 @@ long th_journal_count(const th_journal *journal);
 
 /**
  * Add a finished point. It survives the death of the process at once, and that of the machine
- * within a second (a thread of the journal's own calls fsync). May be called by one thread at a
- * time.
- * @retval TH_EINVAL  number out of range or finished already
- * @retval TH_EIO     the file cannot be written; the journal stays readable up to the last point
+ * within a second (a thread of the journal's own calls fsync). One thread at a time may be in any
+ * of the functions of a journal.
+ * @retval TH_EINVAL  number out of range or finished already, or a number in it is not finite
+ * @retval TH_EIO     the file cannot be written; the journal stays readable up to the last point,
+ *                    and goes on when there is room again. After a failed fsync it does not.
  */
 TH_MUST_USE th_status th_journal_append(th_journal *journal, const th_point *point, th_error *err);
 
-/** Read a finished point; TH_ENONE when it is not. The same bits that were appended. */
+/** Read a finished point into one that was {0} or used before; the same bits that were appended.
+ * @retval TH_ENONE  it is not finished
+ * @retval TH_EIO    its line cannot be read, or was changed since the journal was opened */
 TH_MUST_USE th_status th_journal_get(th_journal *journal, long number, th_point *point,
                                      th_error *err);
 

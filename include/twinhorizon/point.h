@@ -41,7 +41,8 @@ typedef struct {
     char message[256];   /* why undecided or failed; "" otherwise; no control characters */
 } th_point;
 
-/** Make room for so many modes (count is set to it); TH_ENOMEM. */
+/** Make room for so many modes, >= 0 (count is set to it): those that were there stay, new ones are
+ * zero. TH_EINVAL; TH_ENOMEM, and then the point is as it was. */
 TH_MUST_USE th_status th_point_resize(th_point *point, int count, th_error *err);
 
 /** Copy a point; TH_ENOMEM. */

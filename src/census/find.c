@@ -19,15 +19,21 @@
 static const double same_root = 1e-10;
 /* A root this close to the imaginary axis, relative, lies on it. */
 static const double on_axis = 1e-11;
-/* The same for slow modes, whose rounding is relative to c^2: up to 3e-12 was seen. */
-static const double slow_noise = 1e-11;
+/* The same for slow modes, whose rounding is relative to c^2: this share of it, and this many times
+ * the last step of their polishing. Closest to a switch-on 30 steps were seen. */
+static const double slow_noise = 1e-12, noisy_steps = 100.0;
 enum { CUTS = 40, HEIGHTS = 12, ACROSS = 4 };
+
+typedef struct {
+    double complex omega; /* Re >= 0, Im > 0 */
+    double noise;         /* how far rounding may have moved it */
+} mode;
 
 typedef struct {
     const th_matching *matching;
     double rate; /* c^2 */
     th_region *region;
-    double complex *root; /* [count] Re >= 0, Im > 0 */
+    mode *found; /* [count] */
     int count, room;
 } search;
 
@@ -42,15 +48,16 @@ static int found_between(const search *s, double from, double to)
     int sum = 0;
 
     for (int i = 0; i < s->count; i++)
-        if (creal(s->root[i]) >= from && creal(s->root[i]) < to)
-            sum += weight(s->root[i]);
+        if (creal(s->found[i].omega) >= from && creal(s->found[i].omega) < to)
+            sum += weight(s->found[i].omega);
     return sum;
 }
 
-static th_status add(search *s, double complex root, th_error *err)
+/* `last` is the last step of the root's polishing. */
+static th_status add(search *s, double complex root, double last, th_error *err)
 {
     const th_census *c = &s->region->census;
-    const double noise = slow_noise * s->rate;
+    const double noise = fmax(slow_noise * s->rate, noisy_steps * last);
 
     if (fabs(creal(root)) <= fmax(on_axis * cabs(root), noise))
         root = I * cimag(root);
@@ -60,18 +67,19 @@ static th_status add(search *s, double complex root, th_error *err)
         cabs(root) <= c->slowest)
         return TH_OK;
     for (int i = 0; i < s->count; i++)
-        if (cabs(s->root[i] - root) <= fmax(same_root * cabs(root), noise))
+        if (cabs(s->found[i].omega - root) <=
+            fmax(same_root * cabs(root), fmax(noise, s->found[i].noise)))
             return TH_OK;
     if (s->count == s->room) {
         int room = s->room > 0 ? 2 * s->room : 64;
-        double complex *grown = realloc(s->root, (size_t)room * sizeof *grown);
+        mode *grown = realloc(s->found, (size_t)room * sizeof *grown);
 
         if (grown == NULL)
             return th_fail(err, TH_ENOMEM, "census: %d modes", room);
-        s->root = grown;
+        s->found = grown;
         s->room = room;
     }
-    s->root[s->count++] = root;
+    s->found[s->count++] = (mode){root, noise};
     return TH_OK;
 }
 
@@ -82,7 +90,7 @@ static th_status try_from(search *s, double complex start, double reach, th_erro
 
     if (th_matching_polish(s->matching, reach, &re, &im, &last, NULL) != TH_OK)
         return TH_OK;
-    return add(s, re + I * im, err);
+    return add(s, re + I * im, last, err);
 }
 
 /* Start where |F/F'| is smallest along a path: there a mode is close. */
@@ -255,12 +263,12 @@ th_status th_census_find(const th_flow *flow, const th_matching *matching, doubl
     if (st == TH_OK) {
         *count = s.count;
         for (int i = 0; i < s.count; i++) {
-            (*omega)[i][0] = creal(s.root[i]);
-            (*omega)[i][1] = cimag(s.root[i]);
+            (*omega)[i][0] = creal(s.found[i].omega);
+            (*omega)[i][1] = cimag(s.found[i].omega);
         }
         qsort(*omega, (size_t)s.count, sizeof **omega, by_growth);
     }
-    free(s.root);
+    free(s.found);
     th_region_clear(&region);
     return st;
 }

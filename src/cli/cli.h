@@ -52,10 +52,11 @@ int cli_usage(const char *format, ...) TH_PRINTF(1, 2);
 th_status cli_table(const char *path, const th_column *column, int columns, const char *title,
                     const th_case *c, th_table **out, th_error *err) TH_MUST_USE;
 
-/* A file that appears under its name only when it is complete. */
+/* A file that appears under its name only when it is complete; a device or pipe is written as it
+ * stands. */
 typedef struct {
     const char *path;
-    char *part;
+    char *part; /* its name until then; NULL: a device or pipe */
     FILE *stream;
 } cli_file;
 

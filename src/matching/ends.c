@@ -138,10 +138,32 @@ static void pair_slopes(const th_end *e, double complex omega, double complex s,
     *dp = 2.0 * s * *ds - dq;
 }
 
+/* Close to a double root each wave number is known to the root of rounding only, but s, p, q are
+ * simple zeros of the three relations: one step of Newton's method brings them to rounding. */
+static void sharpen(const th_end *e, double complex omega, double complex *s, double complex *p,
+                    double complex *q)
+{
+    const double stiff = 4.0 * (e->sound - e->speed) * (e->sound + e->speed);
+    const double complex r1 = *p + *q - *s * *s - stiff;
+    const double complex r2 = *s * (*p - *q) - 8.0 * omega * e->speed;
+    const double complex r3 = *p * *q + 4.0 * omega * omega;
+    /* dp = 2 s ds - dq - r1 eliminated, as in pair_slopes */
+    const double complex a = *p - *q + 2.0 * *s * *s, b = -2.0 * *s, c = 2.0 * *s * *q, d = *p - *q;
+    const double complex right1 = *s * r1 - r2, right2 = *q * r1 - r3;
+    const double complex determinant = a * d - b * c;
+    const double complex ds = (right1 * d - b * right2) / determinant;
+    const double complex dq = (a * right2 - c * right1) / determinant;
+
+    *p += 2.0 * *s * ds - dq - r1;
+    *s += ds;
+    *q += dq;
+}
+
 th_status th_end_frame(const th_end *end, double complex omega, th_frame *out, th_pair_sum *sum,
                        th_error *err)
 {
     const double n = end->density, v = end->speed;
+    const double nearly_double = 1e-3; /* wave numbers that differ by more are good to 1e-13 */
     const bool mirrored = creal(omega) < 0.0; /* k -> -k* when omega -> -omega* */
     const double complex at = mirrored ? -conj(omega) : omega;
     double complex k[4], s, p, q, ds, dp, ratio, dratio;
@@ -152,6 +174,9 @@ th_status th_end_frame(const th_end *end, double complex omega, th_frame *out, t
     s = k[0] + k[1];
     p = k[0] * k[1];
     q = k[2] * k[3];
+    if (cabs(k[0] - k[1]) < nearly_double * cabs(k[0]) ||
+        cabs(k[2] - k[3]) < nearly_double * cabs(k[2]))
+        sharpen(end, at, &s, &p, &q);
     pair_slopes(end, at, s, p, q, &ds, &dp);
     if (mirrored) {
         s = -conj(s);
