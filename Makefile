@@ -29,7 +29,7 @@ SONAME  := libtwinhorizon.so.$(firstword $(subst ., ,$(VERSION)))
 # Debian packages, and for other systems the same in words with the oldest version tried.
 RUN_PACKAGES    := make gcc libc6-dev pkg-config liblapacke-dev libopenblas-dev libgsl-dev libinih-dev \
                    libhdf5-dev
-TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath python3-h5py \
+TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath python3-h5py python3-qcelemental \
                    octave git
 AUTHOR_PACKAGES := clang clang-format cppcheck shellcheck valgrind libopenmpi-dev openmpi-bin
 RUN_WORDS       := make 4.3, gcc 12 or clang 14, pkg-config, LAPACKE 3.11, OpenBLAS 0.3.21, GSL 2.7, inih 55, \

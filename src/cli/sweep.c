@@ -93,7 +93,7 @@ static long share(const th_case *c, const th_sweep_options *o)
     return sum;
 }
 
-static th_status run(const th_case *c, th_sweep_options *o, bool resume, const char *folder,
+static th_status run(const th_case *c, th_sweep_options o, bool resume, const char *folder,
                      const char *path, int *code, th_error *err)
 {
     th_journal *journal = NULL;
@@ -111,12 +111,12 @@ static th_status run(const th_case *c, th_sweep_options *o, bool resume, const c
         cli_ranks_dismiss();
         return st;
     }
-    wanted = share(c, o);
+    wanted = share(c, &o);
     cli_progress_begin(&progress, wanted, th_journal_count(journal));
-    o->done = done;
-    o->ctx = &progress;
+    o.done = done;
+    o.ctx = &progress;
     catch_signals();
-    st = cli_ranks_sweep(c, o, journal, err);
+    st = cli_ranks_sweep(c, &o, journal, err);
     cli_progress_end(&progress);
     source.ctx = journal;
     if (st == TH_OK && th_journal_count(journal) < wanted) {
@@ -167,7 +167,7 @@ int cli_sweep(int argc, char **argv)
     if (st == TH_OK && cli_rank() > 0)
         st = cli_ranks_sweep(c, &o, NULL, &err);
     else if (st == TH_OK)
-        st = run(c, &o, resume != NULL, folder, path, &code, &err);
+        st = run(c, o, resume != NULL, folder, path, &code, &err);
     if (st != TH_OK)
         code = cli_rank() > 0 ? CLI_INTERNAL : cli_failed(&err);
     th_case_destroy(c);
