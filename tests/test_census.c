@@ -380,6 +380,16 @@ static void test_switch_on(void **state)
         free(f.omega);
         th_flow_destroy(flow);
     }
+    for (int side = -1; side <= 1; side += 2) { /* too slow to be told from 0, but seen */
+        th_flow *flow =
+            step_flow(0.75, 1, 0.3, 1, step_switch(0.75, 1, 0.3, 1, 0) * (1 + 1e-8 * side));
+        found f = find_all(flow);
+
+        assert_int_equal(f.census.growing, 0);
+        assert_int_equal(f.census.slow, 1);
+        free(f.omega);
+        th_flow_destroy(flow);
+    }
 }
 
 /* The region is made to end on a mode: its right edge runs through it. */

@@ -246,6 +246,11 @@ static void test_once_broken(void **state)
          6,
          {1.3471032240442544, 1.3766002284814856, 0.82297983881344039, 1.3480125057659225,
           0.0010846993208506828, 4.2955618857155908, 0.012058253634984934}},
+        /* barely subsonic ends: the circle of the slow modes went beyond a branch point */
+        {"tanh",
+         6,
+         {1.9806643061381588, 1.981046077523607, 1.9761068775069768, 7.9102501132324301,
+          0.051985097179477663, 3.2457140218655174, 0.17701738443422002}},
         /* growth bound far above the band: steps chosen for the band were too long for it */
         {"step",
          4,

@@ -27,6 +27,43 @@ static const double narrowest_band = 1e-4;
  * E/omega^2 is known there to rounding over its square. */
 static const double neutral_floor = 1e-5;
 
+/* Below the real axis F is analytic up to the nearest place where two wave numbers of an end
+ * coincide; the contour around the slow modes stays this share of the way to it. */
+static const double inside_branch = 0.3;
+
+/* Distance from omega = 0 to that place for a subsonic end, closed form (d omega/d k = 0):
+ *     kappa^2 = 2 (c^2 - v^2/4 - sqrt(v^4/16 + v^2 c^2/2)), omega = -i kappa (sqrt(c^2 -
+ *     kappa^2/4) - v),
+ * written so that nothing cancels when v is close to c. */
+static double branch_distance(const th_flow *flow, int piece, double x)
+{
+    th_flow_point at;
+    double v2, c2, kappa2, root;
+
+    th_flow_eval(flow, piece, x, &at);
+    if (!(at.v < at.c))
+        return HUGE_VAL;
+    v2 = at.v * at.v;
+    c2 = at.c * at.c;
+    kappa2 = 2.0 * c2 * (at.c - at.v) * (at.c + at.v) /
+             (c2 - 0.25 * v2 + sqrt(v2 * v2 / 16.0 + 0.5 * v2 * c2));
+    root = sqrt(c2 - 0.25 * kappa2);
+    return sqrt(kappa2) * ((at.c - at.v) * (at.c + at.v) - 0.25 * kappa2) / (root + at.v);
+}
+
+/* Radius of the contour around the slow modes of open ends. */
+static double slow_radius(const th_flow *flow, double top)
+{
+    const double *edge;
+    double branch;
+    int edges;
+
+    edge = th_flow_edges(flow, &edges);
+    branch =
+        fmin(branch_distance(flow, -1, edge[0]), branch_distance(flow, edges - 1, edge[edges - 1]));
+    return fmin(innermost * top, inside_branch * branch);
+}
+
 static th_status whole(double turns, const char *what, int *count, th_error *err)
 {
     const double nearest = floor(turns + 0.5);
@@ -120,7 +157,7 @@ th_status th_region_count(const th_flow *flow, const th_matching *matching, doub
     top = fmax(omega_top, narrowest_band * sound * sound);
     r->census.re_max = beyond * top;
     r->census.floor = open ? 0.0 : neutral_floor * top;
-    r->census.slowest = open ? innermost * top : 0.0;
+    r->census.slowest = open ? slow_radius(flow, top) : 0.0;
     r->census.im_max = fmax(th_growth_bound(flow), 10.0 * neutral_floor * top);
     st = bottom(r, matching, err);
     if (st == TH_OK)
