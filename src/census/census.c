@@ -31,9 +31,9 @@ static const double neutral_floor = 1e-5;
  * coincide; the contour around the slow modes stays this share of the way to it. */
 static const double inside_branch = 0.3;
 
-/* Distance from omega = 0 to that place for a subsonic end, closed form (d omega/d k = 0):
- *     kappa^2 = 2 (c^2 - v^2/4 - sqrt(v^4/16 + v^2 c^2/2)), omega = -i kappa (sqrt(c^2 -
- *     kappa^2/4) - v),
+/* Distance from omega = 0 to that place for a subsonic end; closed form of d omega/d k = 0,
+ *     kappa^2 = 2 (c^2 - v^2/4 - sqrt(v^4/16 + v^2 c^2/2)),
+ *     omega = -i kappa (sqrt(c^2 - kappa^2/4) - v),
  * written so that nothing cancels when v is close to c. */
 static double branch_distance(const th_flow *flow, int piece, double x)
 {

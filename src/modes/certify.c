@@ -201,7 +201,8 @@ th_status th_certify_modes(th_solver *w, th_error *err)
     if (st != TH_OK)
         return st;
     polish_all(w);
-    qsort(s->mode, (size_t)s->count, sizeof *s->mode, by_growth);
+    if (s->count > 1) /* qsort must not be given NULL */
+        qsort(s->mode, (size_t)s->count, sizeof *s->mode, by_growth);
     drop_doubles(s);
     settle_on_axes(w);
     for (int i = 0; i < s->count; i++) {
@@ -217,7 +218,8 @@ th_status th_certify_modes(th_solver *w, th_error *err)
         s->mode[kept++] = *m;
     }
     s->count = kept;
-    qsort(s->mode, (size_t)s->count, sizeof *s->mode, by_growth);
+    if (s->count > 1) /* qsort must not be given NULL */
+        qsort(s->mode, (size_t)s->count, sizeof *s->mode, by_growth);
     s->unstable = s->negative = 0;
     for (int i = 0; i < s->count; i++) {
         const th_mode *m = &s->mode[i];

@@ -2,15 +2,10 @@
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
  * Switch-on lengths of rings and walls. In: a setup. Out: the lengths at which modes collide. May
- * call: parallel, collision, modes, flow, status.
+ * call: parallel, collision, state, status.
  *
- * A state is what th_solve says at one length: how many modes grow, and the neutral ones in the
- * order of their frequencies with the signs of their energies, such as "+-+". Modes of equal sign
- * only pass each other; a - that meets a + makes a growing mode, which takes both out of the row;
- * when it dies they are back, as a rule in exchanged places. So neighbours with equal rows and the
- * growing modes at the same places among them hide nothing but a mode that came and went in between
- * and left no trace. Rows that differ are bisected until a circle holds the two modes that matter
- * and no other.
+ * Neighbouring states (see state.c) that are not alike are bisected until a circle holds the two
+ * modes that matter and no other.
  * Proved by tests/test_onset.c. */
 #include <gsl/gsl_math.h>
 #include <stdio.h>
@@ -18,20 +13,14 @@
 
 #include "alloc.h"
 #include "onset/collision.h"
+#include "onset/state.h"
 #include "parallel.h"
-#include "twinhorizon/modes.h"
 
 /* Halvings of an interval in which growing modes have passed neutral ones: enough to see whether
  * one died and another was born, which takes a stretch of about the distance of two orders. */
 enum { PASSING = 3 };
-/* Accuracy of th_solve: its default. */
-#define ACCURACY 1e-9
 /* Halvings of the distance of two samples: 2^-36 of it is below 1e-9 of upto. */
 enum { HALVINGS = 36 };
-/* Where to try in turn when a length lies too near to a change to be certified: parts of the
- * distance of two samples from where it should be. */
-static const double aside[] = {0, -0.05, 0.07};
-enum { ASIDES = sizeof aside / sizeof aside[0] };
 /* The circle is drawn where other modes are at least this many times as far from its centre as the
  * two: half the radius and twice it. */
 #define ISOLATION 4
@@ -44,165 +33,29 @@ enum { DIP_STEPS = 5 };
 #define FIRST_PART 0.0625
 
 typedef struct {
-    double re, im;
-    int sign; /* of the energy; 0: growing */
-} mark;
-
-typedef struct {
-    double x;
-    bool exists, certain;
-    int unstable;
-    double omega_top;
-    int neutral; /* the first ones, by rising re */
-    int row;     /* neutral ones up to the last -: a + beyond has met none yet */
-    int all;     /* with the growing ones */
-    mark *mode;  /* [all] */
-    char why[256];
-} state;
-
-typedef struct {
     const th_flow_setup *setup;
     double spacing;
     int key, samples;
-    state *sample;       /* [samples] */
+    th_state *sample;    /* [samples] */
     int first;           /* of those that are searched */
     th_onset_list *part; /* [samples] of the intervals */
     th_onset_list *out;
 } search;
 
-static int by_frequency(const void *a, const void *b)
-{
-    const mark *p = a, *q = b;
-
-    if ((p->sign == 0) != (q->sign == 0))
-        return p->sign == 0 ? 1 : -1;
-    if (p->re != q->re)
-        return p->re < q->re ? -1 : 1;
-    return (p->im > q->im) - (p->im < q->im);
-}
-
-static th_status read_state(const th_solution *s, state *out, th_error *err)
-{
-    out->certain = s->verdict != TH_VERDICT_UNDECIDED;
-    (void)snprintf(out->why, sizeof out->why, "%s", s->reason);
-    out->unstable = s->unstable;
-    out->omega_top = s->omega_top;
-    out->mode = th_alloc((size_t)s->count, sizeof *out->mode);
-    if (out->mode == NULL)
-        return th_fail(err, TH_ENOMEM, "onset: %d modes", s->count);
-    out->all = s->count;
-    for (int i = 0; i < out->all; i++) {
-        const th_mode *m = &s->mode[i];
-
-        out->mode[i] = (mark){m->omega_re, m->omega_im, m->norm < 0 ? -1 : 1};
-        if (m->label == TH_LABEL_UNSTABLE)
-            out->mode[i].sign = 0;
-        else
-            out->neutral++;
-    }
-    qsort(out->mode, (size_t)out->all, sizeof *out->mode, by_frequency);
-    for (int i = 0; i < out->neutral; i++)
-        if (out->mode[i].sign < 0)
-            out->row = i + 1;
-    return TH_OK;
-}
-
-static void forget(state *s)
-{
-    free(s->mode);
-    *s = (state){0};
-}
-
-/* The state at x. A flow that breaks a rule does not exist, whatever else fails is uncertain. */
-static th_status solve(const search *w, double x, state *out, th_error *err)
-{
-    const th_solve_options options = {.accuracy = ACCURACY};
-    const th_flow_setup at = th_onset_setup(w->setup, w->key, x);
-    th_solution *answer = NULL;
-    th_flow *flow = NULL;
-    th_error why = {0};
-    th_status st = th_flow_build(&at, &flow, &why);
-
-    *out = (state){.x = x, .exists = st == TH_OK};
-    if (st == TH_OK)
-        st = th_solve(flow, &options, &answer, &why);
-    if (st == TH_OK)
-        st = read_state(answer, out, &why);
-    else
-        (void)snprintf(out->why, sizeof out->why, "%.*s", (int)sizeof out->why - 1, why.text);
-    th_solution_destroy(answer);
-    th_flow_destroy(flow);
-    if (st == TH_ENOMEM || st == TH_EBUG) {
-        if (err != NULL)
-            *err = why;
-        return st;
-    }
-    return TH_OK;
-}
-
-/* A state near x, certain if there is one within a small part of `room`. */
-static th_status solve_near(const search *w, double x, double room, state *out, th_error *err)
-{
-    th_status st = TH_EBUG;
-
-    for (int i = 0; i < ASIDES; i++) {
-        st = solve(w, x + aside[i] * room, out, err);
-        if (st != TH_OK || !out->exists || out->certain || i + 1 == ASIDES)
-            break;
-        forget(out);
-    }
-    return st;
-}
-
-static th_status doubtful(const state *s, th_error *err)
-{
-    return th_fail(err, TH_EUNDECIDED, "onset: nothing is certain near %.12g: %s", s->x, s->why);
-}
-
-static bool equal(const state *a, const state *b)
-{
-    bool same = a->unstable == b->unstable && a->row == b->row;
-
-    for (int i = 0; same && i < a->row; i++)
-        same = a->mode[i].sign == b->mode[i].sign;
-    return same;
-}
-
-/* Neutral modes below mode i. */
-static int below(const state *s, int i)
-{
-    int n = 0;
-
-    while (n < s->neutral && s->mode[n].re < s->mode[i].re)
-        n++;
-    return n;
-}
-
-/* Equal, and the growing modes stand at the same places among the neutral ones. Where they do not,
- * they may just have passed them, or one has died and another was born. */
-static bool alike(const state *a, const state *b)
-{
-    bool same = equal(a, b) && a->all - a->neutral == b->all - b->neutral;
-
-    for (int i = 0; same && i < a->all - a->neutral; i++)
-        same = below(a, a->neutral + i) == below(b, b->neutral + i);
-    return same;
-}
-
 /* ---- the circle -------------------------------------------------------------------------------
  */
 
-static double distance(const mark *m, double centre)
+static double distance(const th_mark *m, double centre)
 {
     return hypot(m->re - centre, m->im);
 }
 
 /* Draw a circle around `inside` modes of a and of b, the ones nearest to its centre. False when
  * others are too near. At the centre 0 a mode and its mirror image are one in the list. */
-static bool draw(const state *a, const state *b, double centre, int inside_a, int inside_b,
+static bool draw(const th_state *a, const th_state *b, double centre, int inside_a, int inside_b,
                  th_circle *out)
 {
-    const state *side[2] = {a, b};
+    const th_state *side[2] = {a, b};
     const int inside[2] = {inside_a, inside_b};
     double within = 0, beyond = fmin(a->omega_top, b->omega_top);
 
@@ -235,9 +88,9 @@ static bool draw(const state *a, const state *b, double centre, int inside_a, in
 
 /* The centre of the collision by which the number of growing modes differs by two: the frequency
  * of the slowest oscillating growing mode on the side that has more of them. 0: there is none. */
-static double pair_centre(const state *more)
+static double pair_centre(const th_state *more)
 {
-    const mark *slowest = NULL;
+    const th_mark *slowest = NULL;
 
     for (int i = more->neutral; i < more->all; i++)
         if (more->mode[i].re > 0 && (slowest == NULL || more->mode[i].im < slowest->im))
@@ -247,7 +100,7 @@ static double pair_centre(const state *more)
 
 /* The middle of two neighbours, + and -, that are - and + on the other side: 0 when the rows differ
  * in another way. */
-static double exchange_centre(const state *a, const state *b)
+static double exchange_centre(const th_state *a, const th_state *b)
 {
     int i = 0;
 
@@ -277,11 +130,11 @@ static th_status report(search *w, th_onset found, int change, th_error *err)
 }
 
 /* One change of the number of growing modes between a and b. *settled: found. */
-static th_status settle_change(search *w, const state *a, const state *b, bool *settled,
+static th_status settle_change(search *w, const th_state *a, const th_state *b, bool *settled,
                                th_error *err)
 {
     const int change = b->unstable - a->unstable;
-    const state *more = change > 0 ? b : a;
+    const th_state *more = change > 0 ? b : a;
     th_circle circle = {.setup = w->setup, .key = w->key};
     th_duo end[2];
     th_onset found;
@@ -299,7 +152,7 @@ static th_status settle_change(search *w, const state *a, const state *b, bool *
     if (!drawn)
         return TH_OK;
     for (int i = 0; i < 2; i++) {
-        const state *at = i == 0 ? a : b;
+        const th_state *at = i == 0 ? a : b;
 
         st = th_collision_look(&circle, at->x, TH_MATCHING_USUAL, &end[i], err);
         if (st != TH_OK || !th_collision_isolated(&end[i]) || (end[i].square < 0) != (at == more))
@@ -322,7 +175,7 @@ static double bottom(const th_duo duo[3])
 
 /* A + and a - exchange their places between a and b: the square of their difference is positive at
  * both and has a minimum in between. Below zero: a mode grows on a short stretch. */
-static th_status settle_exchange(search *w, const state *a, const state *b, bool *settled,
+static th_status settle_exchange(search *w, const th_state *a, const th_state *b, bool *settled,
                                  th_error *err)
 {
     const double centre = exchange_centre(a, b);
@@ -372,7 +225,8 @@ static th_status settle_exchange(search *w, const state *a, const state *b, bool
     return st == TH_OK ? report(w, found[1], -2, err) : st;
 }
 
-static th_status settle(search *w, const state *a, const state *b, bool *settled, th_error *err)
+static th_status settle(search *w, const th_state *a, const th_state *b, bool *settled,
+                        th_error *err)
 {
     if (a->unstable != b->unstable)
         return settle_change(w, a, b, settled, err);
@@ -380,15 +234,16 @@ static th_status settle(search *w, const state *a, const state *b, bool *settled
 }
 
 /* All changes between a and b, in ascending order. */
-static th_status resolve(search *w, const state *a, const state *b, int halvings, th_error *err)
+static th_status resolve(search *w, const th_state *a, const th_state *b, int halvings,
+                         th_error *err)
 {
-    state middle = {0};
+    th_state middle = {0};
     bool settled = false;
     th_status st = TH_OK;
 
-    if (alike(a, b) || (equal(a, b) && halvings < HALVINGS - PASSING))
+    if (th_state_alike(a, b) || (th_state_equal(a, b) && halvings < HALVINGS - PASSING))
         return TH_OK;
-    if (!equal(a, b))
+    if (!th_state_equal(a, b))
         st = settle(w, a, b, &settled, err);
     if (st != TH_OK || settled)
         return st;
@@ -396,14 +251,14 @@ static th_status resolve(search *w, const state *a, const state *b, int halvings
         return th_fail(err, TH_EUNDECIDED,
                        "onset: two changes between %.15g and %.15g cannot be told apart", a->x,
                        b->x);
-    st = solve_near(w, a->x / 2 + b->x / 2, b->x - a->x, &middle, err);
+    st = th_state_near(w->setup, w->key, a->x / 2 + b->x / 2, b->x - a->x, &middle, err);
     if (st == TH_OK && !middle.certain)
-        st = doubtful(&middle, err);
+        st = th_state_doubtful(&middle, err);
     if (st == TH_OK)
         st = resolve(w, a, &middle, halvings - 1, err);
     if (st == TH_OK)
         st = resolve(w, &middle, b, halvings - 1, err);
-    forget(&middle);
+    th_state_forget(&middle);
     return st;
 }
 
@@ -414,16 +269,16 @@ static th_status sample_work(void *ctx, long item, th_error *err)
 {
     search *w = ctx;
     const double x = w->spacing * (item == 0 ? FIRST_PART : (double)item);
-    state *s = &w->sample[item];
-    const th_status st = solve_near(w, x, item == 0 ? x : w->spacing, s, err);
+    th_state *s = &w->sample[item];
+    const th_status st = th_state_near(w->setup, w->key, x, item == 0 ? x : w->spacing, s, err);
 
-    return st == TH_OK && s->exists && !s->certain ? doubtful(s, err) : st;
+    return st == TH_OK && s->exists && !s->certain ? th_state_doubtful(s, err) : st;
 }
 
 static th_status interval_work(void *ctx, long item, th_error *err)
 {
     search w = *(const search *)ctx;
-    const state *a = &w.sample[w.first + item];
+    const th_state *a = &w.sample[w.first + item];
 
     w.out = &w.part[item];
     return resolve(&w, a, a + 1, HALVINGS, err);
@@ -498,7 +353,7 @@ th_status th_onset_closed(const th_flow_setup *setup, const th_onset_options *op
     }
 done:
     for (int i = 0; w.sample != NULL && i < w.samples; i++)
-        forget(&w.sample[i]);
+        th_state_forget(&w.sample[i]);
     for (int i = 0; w.part != NULL && i < w.samples; i++)
         th_onset_clear(&w.part[i]);
     free(w.sample);

@@ -230,7 +230,8 @@ static th_status answer_open(answer *a, double accuracy, const th_point *const p
         return st;
     if (!settled(a))
         return solve_fully(a, accuracy, err);
-    qsort(a->point->mode, (size_t)a->point->count, sizeof *a->point->mode, by_growth);
+    if (a->point->count > 1) /* qsort must not be given NULL */
+        qsort(a->point->mode, (size_t)a->point->count, sizeof *a->point->mode, by_growth);
     for (int i = 0; i < a->point->count; i++)
         a->point->mode[i].confirmed |= TH_BY_CENSUS | (a->point->index_known ? TH_BY_INDEX : 0u);
     a->point->state = TH_POINT_OK;

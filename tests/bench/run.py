@@ -46,9 +46,8 @@ LOOSEST = "1e-3"
 # No further box after one that took this long or this much memory.
 LONGEST, LARGEST = 90.0, 1000.0  # seconds, MB
 
-GAPS = (5, 10, 20) if QUICK else (5, 10, 20, 40, 80)
-POINTS = (5, 10) if QUICK else (5, 10, 20, 40)
-THREAD_POINTS = 10 if QUICK else 20
+GAPS = (5, 10, 20) if QUICK else (5, 10, 25, 50, 100, 200, 400)
+POINTS = (50, 100) if QUICK else (125, 250, 500, 1000)
 
 POCKET = """[units]
 system = reduced
@@ -76,6 +75,16 @@ gap = 10
 [ends]
 kind = open
 """
+
+
+WELL = """[units]
+system = reduced
+[flow]
+shape = well
+mach = 0.6
+gap = 1.5
+"""
+DENSE = []  # wall time of the dense box at one configuration, from part 1
 
 
 class Run:
@@ -198,6 +207,7 @@ def growth_rates(folder, summary):
         worst = max(math.inf if e is None else abs(e) for e in off)
         if start is None or (len(run.modes), -worst) > (len(start.modes), -start.worst):
             start, start.worst = run, worst
+    DENSE.append(start.wall)
 
     guesses, boxes = start.modes, []
     for spacing, padding in BOXES:
@@ -265,34 +275,61 @@ def lengths(folder, summary):
     )
 
 
-def sweep(case, folder, points, *arguments):
-    axis = f"sweep.gap=4 to 12 in {points}"
-    target = os.path.join(folder, "tables")
-    return program("sweep", case, "--set", axis, "--out", target, *arguments)
+def sweep(case, points, *arguments):
+    """A sweep into a folder of its own, which goes away with it."""
+    with tempfile.TemporaryDirectory() as target:
+        return program("sweep", case[0], "--set", f"sweep.gap={case[1]} in {points}", "--out",
+                       os.path.join(target, "tables"), *arguments)
 
 
 def sweeps(folder, summary):
-    case = os.path.join(folder, "step.ini")
-    print("\n3. Sweeps: the same step, gap from 4 to 12\n")
-    print(" points   wall s   cpu s   cpu s/point     MB")
-    cpu = []
-    for points in POINTS:
-        run = sweep(case, folder, points)
-        cpu.append(run.cpu)
-        print(f"{points:7}{run.wall:9.2f}{run.cpu:8.2f}{run.cpu / points:14.3f}{run.peak:7.0f}")
-    print(f"  Between the last two the cost grows as points^{exponent(POINTS, cpu):.2f} (cpu).")
-    summary.append(f"sweep: {cpu[-1] / POINTS[-1]:.2f} s of cpu a point")
-    if "--threads" not in Run(PROGRAM, "sweep", "--help").output:
-        summary.append("threads: a sweep uses one; `sweep` has no --threads")
-        return
-    print(f"\nthreads   wall s   cpu s   speed-up   ({THREAD_POINTS} points)")
+    cases = []
+    for name, shape, gaps in (
+        ("step", "shape = step", "0.5 to 20"),
+        ("tanh", "shape = tanh\nwidth_black = 0.5\nwidth_white = 0.5", "0.5 to 20"),
+        ("well", None, "0.2 to 8"),
+    ):
+        path = os.path.join(folder, f"sweep-{name}.ini")
+        with open(path, "w", encoding="ascii") as file:
+            file.write(WELL if shape is None else STEP.replace("shape = step", shape))
+        cases.append((path, gaps, name))
+    print("\n3. Sweeps, every growing mode certified at every point (all processors)")
+    print("   step and tanh (widths 0.5): v = 1, c = 1.5/0.5/1.5, gap 0.5 to 20; well: mach 0.6,\n"
+          "   gap 0.2 to 8. dense box: its time at one point (part 1) times the points.\n")
+    print("case   points   wall s   cpu s   cpu s/point     MB   dense box, extrapolated / wall")
+    for case in cases:
+        cpu = []
+        for points in POINTS if case[2] == "step" else POINTS[-1:]:
+            run = sweep(case, points)
+            cpu.append(run.cpu)
+            print(f"{case[2]:5}{points:8}{run.wall:9.2f}{run.cpu:8.2f}{run.cpu / points:14.4f}"
+                  f"{run.peak:7.0f}{DENSE[0] * points / run.wall:12.0f}")
+        if len(cpu) > 1:
+            power = exponent(POINTS, cpu)
+            print(f"       Between the last two the cost grows as points^{power:.2f} (cpu).")
+        summary.append(f"sweep of {POINTS[-1]} gaps, {case[2]}: {run.wall:.1f} s; dense boxes would "
+                       f"take {DENSE[0] * POINTS[-1] / run.wall:.0f} times as long")
+    print(f"\nthreads   wall s   cpu s   speed-up   ({POINTS[-1]} points, tanh)")
     alone, threads = None, 1
     while threads <= CORES:
-        run = sweep(case, folder, THREAD_POINTS, "--threads", str(threads))
+        run = sweep(cases[1], POINTS[-1], "--threads", str(threads))
         alone = alone or run.wall
         print(f"{threads:7}{run.wall:9.2f}{run.cpu:8.2f}{alone / run.wall:11.2f}")
         threads *= 2
-    summary.append(f"threads: {alone / run.wall:.1f} times faster with {threads // 2}")
+    summary.append(f"threads: {alone / run.wall:.2f} times faster with {threads // 2}")
+
+
+def switch_on_map(folder, summary):
+    side = 20 if QUICK else 100
+    case = os.path.join(folder, "map.ini")
+    with open(case, "w", encoding="ascii") as file:
+        file.write(STEP.replace("shape = step", "shape = tanh\nwidth_black = 0.5\nwidth_white = 0.5"))
+        file.write(f"[sweep]\nsound_pocket = 0.4 to 0.7 in {side}\nspeed = 0.9 to 1.1 in {side}\n")
+    run = program("onset", case, "--orders", "6", "--upto", "30", "--csv",
+                  os.path.join(folder, "map.csv"))
+    text = f"switch-on map, {side} x {side} points, 6 orders, tanh: {run.wall:.1f} s"
+    print(f"\n4. {text} ({run.cpu:.1f} s cpu)")
+    summary.append(text)
 
 
 def main():
@@ -305,7 +342,7 @@ def main():
     sys.stdout.reconfigure(line_buffering=True)
     with tempfile.TemporaryDirectory() as folder:
         summary = []
-        for part in (growth_rates, lengths, sweeps):
+        for part in (growth_rates, lengths, sweeps, switch_on_map):
             part(folder, summary)
     print("\nSummary")
     for line in summary:
