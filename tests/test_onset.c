@@ -62,8 +62,7 @@ static void check_row(const th_onset_list *list, int i, int j, double want)
     assert_true(o->omega_re == 0);
 }
 
-/* ---- closed forms -----------------------------------------------------------------------------
- */
+/* ---- closed forms ---------------------------------------------------------------------------- */
 
 /* L_j = [atan(k_u/k_0) + atan(k_d/k_0) + j pi]/k_0 (static linearised equation; set-up of
  * "Saturation of black hole lasers in Bose-Einstein condensates", Phys. Rev. D 88, 125012 (2013)).
@@ -208,8 +207,7 @@ static void test_barriers(void **state)
     }
 }
 
-/* ---- against other computations ---------------------------------------------------------------
- */
+/* ---- against other computations -------------------------------------------------------------- */
 
 /* Growing modes by the argument principle, which knows nothing of K. */
 static int census_at(th_flow_setup setup, double gap)
@@ -319,18 +317,22 @@ static void test_ring(void **state)
     th_onset_clear(&list);
 }
 
-/* Other samples, same lengths. */
+/* Other samples, same lengths. Two of the unstable stretches, near 1.8 and 4.4, are so short that
+ * no sample falls into them: modes of opposite energy have changed places. th_solve confirms the
+ * ends of these. */
 static void test_samples(void **state)
 {
-    const double value[5] = {1, 1.4, 0.6, 1.4, 1};
-    const th_flow_setup setup = setup_of("step", ring(20, 3), value);
-    th_onset_list list = find(&setup, (th_onset_options){.upto = 8, .samples = 30, .threads = 2});
+    static const int samples[2] = {4, 14};
+    const double value[5] = {1, 1.2, 0.3, 1.2, 1};
+    const th_flow_setup setup = setup_of("step", ring(16, 3), value);
+    th_onset_list list = find(&setup, (th_onset_options){.upto = 7, .samples = 9, .threads = 2});
+    int confirmed = 0;
 
     (void)state;
-    assert_true(list.count >= 4);
-    for (int samples = 5; samples <= 11; samples += 3) {
+    assert_int_equal(list.count, 17);
+    for (int k = 0; k < 2; k++) {
         th_onset_list other =
-            find(&setup, (th_onset_options){.upto = 8, .samples = samples, .threads = 1});
+            find(&setup, (th_onset_options){.upto = 7, .samples = samples[k], .threads = 1});
 
         assert_int_equal(other.count, list.count);
         for (int i = 0; i < list.count; i++) {
@@ -342,6 +344,14 @@ static void test_samples(void **state)
         }
         th_onset_clear(&other);
     }
+    for (int i = 0; i + 1 < list.count; i++)
+        if (list.onset[i].change == 2 && list.onset[i + 1].change == -2 &&
+            list.onset[i + 1].gap - list.onset[i].gap < 0.07) {
+            check_collision(setup, &list.onset[i]);
+            check_collision(setup, &list.onset[i + 1]);
+            confirmed++;
+        }
+    assert_int_equal(confirmed, 2);
     th_onset_clear(&list);
 }
 
@@ -380,8 +390,7 @@ static void test_ring_reach(void **state)
     th_onset_clear(&list);
 }
 
-/* ---- maps -------------------------------------------------------------------------------------
- */
+/* ---- maps ------------------------------------------------------------------------------------ */
 
 static th_case *read_case(const char *text)
 {
@@ -531,8 +540,7 @@ static void test_map_of_one(void **state)
     th_case_destroy(c);
 }
 
-/* ---- errors -----------------------------------------------------------------------------------
- */
+/* ---- errors ---------------------------------------------------------------------------------- */
 
 static void expect(th_flow_setup setup, th_onset_options options, th_status want, const char *word)
 {

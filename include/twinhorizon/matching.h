@@ -38,6 +38,7 @@ typedef enum { TH_MATCHING_USUAL, TH_MATCHING_FINE } th_matching_grain;
  * @param[in]  grain      step length
  * @retval TH_EINVAL      flow or out is NULL, omega_top is not > 0
  * @retval TH_ECONVERGE   the flow is too rough to be expanded
+ * @retval TH_EUNDECIDED  the flow is too long for its shortest waves (more than 500 steps)
  * Tests: tests/test_matching.c.
  */
 TH_MUST_USE th_status th_matching_create(const th_flow *flow, double omega_top,

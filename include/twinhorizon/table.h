@@ -83,6 +83,7 @@ TH_MUST_USE th_status th_table_resume(const char *path, const th_column *column,
  * finite, the row is full) or finds no memory makes th_table_end_row fail.
  */
 void th_table_put_number(th_table *table, double value); /* as th_number_write */
+void th_table_put_exact(th_table *table, double value);  /* as th_number_write_exact */
 void th_table_put_integer(th_table *table, long value);
 void th_table_put_boolean(th_table *table, bool value); /* true or false */
 void th_table_put_text(th_table *table, const char *text);

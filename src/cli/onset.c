@@ -30,8 +30,7 @@ static bool open_ends(const state *w)
     return w->c->setup.ends.kind == TH_ENDS_OPEN;
 }
 
-/* ---- table ------------------------------------------------------------------------------------
- */
+/* ---- table ----------------------------------------------------------------------------------- */
 
 static th_status start_table(state *w, const char *path, th_error *err)
 {
@@ -107,8 +106,7 @@ static th_status put_rows(state *w, const th_onset_point *point, th_error *err)
     return st;
 }
 
-/* ---- text -------------------------------------------------------------------------------------
- */
+/* ---- text ------------------------------------------------------------------------------------ */
 
 static void print_value(const state *w, const th_shape_key *key, double value)
 {
@@ -233,8 +231,7 @@ static void print_point(const state *w, const th_onset_point *point)
     putchar('\n');
 }
 
-/* ---- command ----------------------------------------------------------------------------------
- */
+/* ---- command --------------------------------------------------------------------------------- */
 
 static th_status take(void *ctx, const th_onset_point *point, th_error *err)
 {

@@ -128,8 +128,8 @@ static void put_mode(th_table *table, const th_case *c, int number, const th_mod
     th_confirmed_text(m->confirmed, confirmed);
     th_table_put_integer(table, number);
     th_table_put_text(table, th_label_text(m->label));
-    th_table_put_number(table, m->omega_re * rate);
-    th_table_put_number(table, m->omega_im * rate);
+    th_table_put_exact(table, m->omega_re * rate);
+    th_table_put_exact(table, m->omega_im * rate);
     th_table_put_number(table, m->omega_error * rate);
     th_table_put_integer(table, m->norm);
     th_table_put_number(table, m->pocket_share);

@@ -191,8 +191,8 @@ static th_status put_modes(writer *w, const th_point *p, th_error *err)
         th_table_put_integer(w->modes, i + 1);
         th_table_put_integer(w->modes, w->branch[i]);
         th_table_put_text(w->modes, th_label_text(m->label));
-        th_table_put_number(w->modes, m->omega_re * rate);
-        th_table_put_number(w->modes, m->omega_im * rate);
+        th_table_put_exact(w->modes, m->omega_re * rate);
+        th_table_put_exact(w->modes, m->omega_im * rate);
         th_table_put_number(w->modes, m->omega_error * rate);
         th_table_put_text(w->modes, confirmed);
         st = th_table_end_row(w->modes, err);

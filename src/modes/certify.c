@@ -93,7 +93,8 @@ static bool polish(const th_solver *w, th_mode *m)
     double complex root;
     double error, shift;
 
-    if (th_polish(w->usual, w->fine, w->s->omega_top, from, reach, &root, &error) != TH_OK)
+    if (th_polish(w->usual, w->fine, th_polish_scale(w->flow, w->s->omega_top), from, reach, &root,
+                  &error) != TH_OK)
         return false;
     shift = cabs(root - from);
     if (shift > agreement * (m->omega_error + error))

@@ -151,7 +151,7 @@ th_status th_matrix_modes(th_solver *w, double omega_low, th_error *err)
     s->unknowns = base->op->size;
     s->zero_modes = base->op->ring ? 2 : 0;
     s->absorbing = base->mesh->absorbing;
-    s->dense = th_solver_conserving(w) || !s->census_known || s->unknowns <= TH_ORDINARY_SIZE;
+    s->dense = th_solver_conserving(w) || s->unknowns <= TH_ORDINARY_SIZE;
     if (!s->dense)
         return TH_OK;
     if (s->unknowns > LARGEST)

@@ -8,11 +8,11 @@
 #include <float.h>
 #include <math.h>
 
-/* Rounding of the root, in units of the largest frequency at hand. Measured against 30-digit roots
- * of steps: below 3. */
-static const double rounding = 8.0 * DBL_EPSILON;
+/* Rounding of the root, in units of the largest frequency at hand. Measured on 320 growing modes of
+ * random flows against 30-digit roots (tests/check_precision.py --random): up to 14. */
+static const double rounding = 32.0 * DBL_EPSILON;
 
-th_status th_polish(const th_matching *usual, const th_matching *fine, double omega_top,
+th_status th_polish(const th_matching *usual, const th_matching *fine, double scale,
                     double complex from, double reach, double complex *root, double *error)
 {
     double re[2] = {creal(from), creal(from)}, im[2] = {cimag(from), cimag(from)}, last[2];
@@ -27,6 +27,13 @@ th_status th_polish(const th_matching *usual, const th_matching *fine, double om
         return st;
     *root = re[1] + I * im[1];
     *error = 2.0 * (hypot(re[0] - re[1], im[0] - im[1]) + fmax(last[0], last[1])) +
-             rounding * fmax(cabs(from), omega_top);
+             rounding * fmax(cabs(from), scale);
     return TH_OK;
+}
+
+double th_polish_scale(const th_flow *flow, double omega_top)
+{
+    const double sound = th_flow_sound_max(flow);
+
+    return fmax(omega_top, 0.25 * sound * sound);
 }

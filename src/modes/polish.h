@@ -7,12 +7,13 @@
 #define TH_MODES_POLISH_H
 
 #include <complex.h>
+#include "twinhorizon/flow.h"
 #include "twinhorizon/matching.h"
 
 /**
  * Polish a root on two grains of the matching function.
  *
- * @param[in]  omega_top  scale of rounding errors
+ * @param[in]  scale      of rounding errors: th_polish_scale
  * @param[in]  from       start
  * @param[in]  reach      largest distance of the root from it
  * @param[out] root       on the fine grain
@@ -20,8 +21,12 @@
  *                        rounding
  * @retval TH_ECONVERGE  no root within reach on one of them
  */
-TH_MUST_USE th_status th_polish(const th_matching *usual, const th_matching *fine, double omega_top,
+TH_MUST_USE th_status th_polish(const th_matching *usual, const th_matching *fine, double scale,
                                 double complex from, double reach, double complex *root,
                                 double *error);
+
+/** Frequency to which rounding errors of roots are relative: the top of the band, or a quarter of
+ * c^2 where that is larger. */
+double th_polish_scale(const th_flow *flow, double omega_top);
 
 #endif

@@ -42,8 +42,7 @@ typedef struct {
     th_onset_list *out;
 } search;
 
-/* ---- the circle -------------------------------------------------------------------------------
- */
+/* ---- the circle ------------------------------------------------------------------------------ */
 
 static double distance(const th_mark *m, double centre)
 {
@@ -112,8 +111,7 @@ static double exchange_centre(const th_state *a, const th_state *b)
     return (a->mode[i].re + a->mode[i + 1].re + b->mode[i].re + b->mode[i + 1].re) / 4;
 }
 
-/* ---- an interval with one change --------------------------------------------------------------
- */
+/* ---- an interval with one change ------------------------------------------------------------- */
 
 static th_status report(search *w, th_onset found, int change, th_error *err)
 {
@@ -262,8 +260,7 @@ static th_status resolve(search *w, const th_state *a, const th_state *b, int ha
     return st;
 }
 
-/* ---- all samples ------------------------------------------------------------------------------
- */
+/* ---- all samples ----------------------------------------------------------------------------- */
 
 static th_status sample_work(void *ctx, long item, th_error *err)
 {

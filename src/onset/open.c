@@ -95,8 +95,7 @@ static th_status refine(const search *w, int order, double guess, th_root *root,
                    order, root->low, root->high, (int)ROUNDS);
 }
 
-/* ---- foreseeing along a line ------------------------------------------------------------------
- */
+/* ---- foreseeing along a line ----------------------------------------------------------------- */
 
 /* The polynomial through the known lengths of this order at the newest points; 0: none is. */
 static double foresee(const th_trail *trail, int order, double place)
@@ -177,8 +176,7 @@ void th_trail_clear(th_trail *trail)
     *trail = (th_trail){0};
 }
 
-/* ---- all orders of one setup ------------------------------------------------------------------
- */
+/* ---- all orders of one setup ----------------------------------------------------------------- */
 
 th_status th_onset_open(const th_flow_setup *setup, const th_onset_options *options, double place,
                         th_trail *trail, th_onset_list *out, th_error *err)

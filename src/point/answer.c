@@ -68,7 +68,8 @@ static th_status take_root(answer *a, double complex start, double reach, th_err
     th_point *p = a->point;
     double complex root;
     double error;
-    th_status st = th_polish(a->usual, a->fine, a->omega_top, start, reach, &root, &error);
+    th_status st = th_polish(a->usual, a->fine, th_polish_scale(a->flow, a->omega_top), start,
+                             reach, &root, &error);
 
     if (st != TH_OK)
         return TH_OK;

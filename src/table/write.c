@@ -283,17 +283,30 @@ static bool start_cell(th_table *table, th_cell_kind kind)
     return false;
 }
 
-void th_table_put_number(th_table *table, double value)
+static void put_number(th_table *table, double value, bool exact)
 {
     char text[NUMBER_TEXT_MAX];
 
     if (!start_cell(table, TH_KIND_NUMBER))
         return;
-    th_number_write(value, text, sizeof text);
+    if (exact)
+        th_number_write_exact(value, text, sizeof text);
+    else
+        th_number_write(value, text, sizeof text);
     if (!isfinite(value) && table->wrong.status == TH_OK)
         (void)th_fail(&table->wrong, TH_EINVAL, "%s: column %s: got %s, want a finite number",
                       table->path, table->column[table->cells - 1].name, text);
     th_buffer_text(&table->row, text);
+}
+
+void th_table_put_number(th_table *table, double value)
+{
+    put_number(table, value, false);
+}
+
+void th_table_put_exact(th_table *table, double value)
+{
+    put_number(table, value, true);
 }
 
 void th_table_put_integer(th_table *table, long value)
