@@ -239,9 +239,9 @@ def check_sweep(folder):
                 m["sound_pocket"] == point["sound_pocket"] and m["label"] == "unstable"]
         count = sum(2 if float(m["omega_re"]) > 0 else 1 for m in here)
         fastest = max(here, key=lambda m: float(m["omega_im"]))
-        if count != int(point["unstable"]) or \
-           point["growth_max"] != fastest["omega_im"] or \
-           point["omega_re_fastest"] != fastest["omega_re"]:
+        same = all(math.isclose(float(point[a]), float(fastest[b]), rel_tol=1e-14)
+                   for a, b in (("growth_max", "omega_im"), ("omega_re_fastest", "omega_re")))
+        if count != int(point["unstable"]) or not same:
             check("both tables tell the same", False, point, here)
             break
     else:

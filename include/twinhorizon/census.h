@@ -61,6 +61,9 @@ TH_MUST_USE th_status th_census_count(const th_flow *flow, const th_matching *ma
  * Count and find: subdivide the region by the argument principle until every part holds one mode,
  * and polish it. Open ends only.
  *
+ * Slow modes (|omega| < out->slowest) are counted in out->slow and not listed: within about a
+ * millionth of a switch-on, growing + slow equals the static index, not growing alone.
+ *
  * @param[out] omega  [*count][2] (Re, Im) of the growing modes with Re omega >= 0, by falling Im;
  *                    the caller frees it; NULL after a failure
  * @retval TH_EUNDECIDED  as th_census_count, or a mode that was counted could not be pinned down
