@@ -84,9 +84,8 @@ int main(int argc, char **argv)
     gsl_set_error_handler_off();
     one_blas_thread();
     code = cli_rank() == 0 ? run(argc, argv) : run_helper(argc, argv);
-    if (fflush(stdout) != 0 || ferror(stdout)) {
-        fprintf(stderr, "twinhorizon: standard output cannot be written (%s)\n", strerror(errno));
-        code = code == CLI_INTERNAL ? code : CLI_USAGE;
-    }
+    /* a command that failed has said why */
+    if ((fflush(stdout) != 0 || ferror(stdout)) && code < CLI_USAGE)
+        code = cli_usage("standard output cannot be written (%s)", strerror(errno));
     return cli_ranks_end(code);
 }

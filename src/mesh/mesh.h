@@ -51,7 +51,7 @@ typedef struct {
  * Inside: elements end at every edge of the flow; each is split until (1) the shortest wave at
  * omega_top spans few enough wavelengths for the order and accuracy (evanescent waves only near
  * the places where they start), (2) it is no longer than a
- * few times the width of, or distance to, every feature, (3) the Legendre series of n and c^2 on
+ * few times the width of, or distance to, every feature, (3) the Legendre series of n, v and c^2 on
  * it have converged. Outside a subsonic open end: complex scaling on elements that grow by
  * a factor of three until waves of omega_low have died. Outside a supersonic open end, where no
  * rotation damps all outgoing waves and no incoming one: an absorbing layer with a smooth onset on

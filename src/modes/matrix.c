@@ -106,7 +106,8 @@ static th_status examine(th_solver *w, double complex omega, th_error *err)
     } else if (st == TH_OK) {
         mode.omega_re = creal(fine.omega);
         mode.omega_im = cimag(fine.omega);
-        mode.omega_error = apart + coarse.rounding + fine.rounding;
+        /* twice: both levels may err to the same side */
+        mode.omega_error = 2.0 * apart + coarse.rounding + fine.rounding;
         st = describe(w, &fine, &mode, err);
         if (st == TH_OK)
             st = keep(w, &mode, err);
