@@ -13,6 +13,7 @@
 #include <cmocka.h>
 
 #include "flows.h"
+#include "onset/root.h"
 #include "refuse.h"
 #include "twinhorizon/census.h"
 #include "twinhorizon/index.h"
@@ -60,6 +61,48 @@ static void check_row(const th_onset_list *list, int i, int j, double want)
     assert_int_equal(o->kind, j % 2 == 0 ? TH_ONSET_GROWING : TH_ONSET_PAIR);
     assert_int_equal(o->change, 1);
     assert_true(o->omega_re == 0);
+}
+
+/* ---- the search ------------------------------------------------------------------------------ */
+
+static double kink(double t)
+{
+    return t < 0 ? 0.1 * t : 10 * t;
+}
+
+static double cliff(double t)
+{
+    return atan(1e6 * t) + 1e-3 * t;
+}
+
+static double rise(double t)
+{
+    return expm1(400 * t);
+}
+
+/* Functions on which secants crawl, or leave the bracket: found all the same, as open.c asks. */
+static void test_root(void **state)
+{
+    double (*const f[4])(double) = {kink, cliff, rise, cbrt};
+
+    (void)state;
+    for (int i = 0; i < 4; i++)
+        for (double at = 0.1; at < 0.95; at += 0.2) {
+            th_root root = {.low = 0, .high = 1, .slope = f[i](1 - at) - f[i](-at), .noise = 1e-16};
+            double x = 0.5;
+            int rounds = 0;
+
+            do {
+                const double next = th_root_next(&root, x, f[i](x - at));
+
+                assert_true(root.low <= at && at <= root.high);
+                assert_true(next >= root.low && next <= root.high);
+                x = next;
+                rounds++;
+            } while (fabs(root.step) > 1e-12 && root.high - root.low > 1e-12);
+            assert_true(rounds < 120);
+            close_to("root", x, at, 2e-11); /* a last step by a slope that is ten times off */
+        }
 }
 
 /* ---- closed forms ---------------------------------------------------------------------------- */
@@ -666,14 +709,15 @@ static void test_map_memory(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(test_step),       cmocka_unit_test(test_random_steps),
-        cmocka_unit_test(test_well),       cmocka_unit_test(test_sech),
-        cmocka_unit_test(test_barriers),   cmocka_unit_test(test_smooth),
-        cmocka_unit_test(test_ring),       cmocka_unit_test(test_samples),
-        cmocka_unit_test(test_walls),      cmocka_unit_test(test_ring_reach),
-        cmocka_unit_test(test_map),        cmocka_unit_test(test_map_stops),
-        cmocka_unit_test(test_map_of_one), cmocka_unit_test(test_errors),
-        cmocka_unit_test(test_memory),     cmocka_unit_test(test_map_memory),
+        cmocka_unit_test(test_root),         cmocka_unit_test(test_step),
+        cmocka_unit_test(test_random_steps), cmocka_unit_test(test_well),
+        cmocka_unit_test(test_sech),         cmocka_unit_test(test_barriers),
+        cmocka_unit_test(test_smooth),       cmocka_unit_test(test_ring),
+        cmocka_unit_test(test_samples),      cmocka_unit_test(test_walls),
+        cmocka_unit_test(test_ring_reach),   cmocka_unit_test(test_map),
+        cmocka_unit_test(test_map_stops),    cmocka_unit_test(test_map_of_one),
+        cmocka_unit_test(test_errors),       cmocka_unit_test(test_memory),
+        cmocka_unit_test(test_map_memory),
     };
 
     openblas_set_num_threads(1); /* small matrices: more threads only wait for each other */

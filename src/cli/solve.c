@@ -60,10 +60,10 @@ static void print_modes(const cli_view *v, const th_solution *s)
         puts("\nModes       none in the band");
         return;
     }
-    printf("\n%4s  %-9s %16s %16s %8s %10s %4s %6s %5s %9s  %s\n", "mode", "label",
+    printf("\n%4s  %-9s %16s %16s %8s %8s %10s %4s %6s %5s %9s  %s\n", "mode", "label",
            v->si ? "frequency/Hz" : "frequency", v->si ? "growth*s" : "growth rate",
-           v->si ? "+-*s" : "+-", v->si ? "e-fold/ms" : "e-fold", "norm", "pocket", "nodes",
-           "condition", "confirmed by");
+           v->si ? "+-*s" : "+-", "shift", v->si ? "e-fold/ms" : "e-fold", "norm", "pocket",
+           "nodes", "condition", "confirmed by");
     for (int i = 0; i < s->count; i++) {
         const th_mode *m = &s->mode[i];
         char frequency[CLI_NUMBER], growth[CLI_NUMBER], time[CLI_NUMBER] = "-";
@@ -72,11 +72,11 @@ static void print_modes(const cli_view *v, const th_solution *s)
         if (m->label == TH_LABEL_UNSTABLE)
             (void)snprintf(time, sizeof time, "%.5g", v->time / m->omega_im);
         th_confirmed_text(m->confirmed, confirmed);
-        printf("%4d  %-9s %16s %16s %8.1e %10s %4s %5.0f%% %5d %9.3g  %s\n", i + 1,
+        printf("%4d  %-9s %16s %16s %8.1e %8.1e %10s %4s %5.0f%% %5d %9.3g  %s\n", i + 1,
                th_label_text(m->label),
                cli_number(m->omega_re * v->frequency, m->omega_error * v->frequency, frequency),
                cli_number(m->omega_im * v->rate, m->omega_error * v->rate, growth),
-               m->omega_error * v->rate, time,
+               m->omega_error * v->rate, m->shift * v->rate, time,
                m->norm < 0   ? "-"
                : m->norm > 0 ? "+"
                              : "0",
@@ -88,6 +88,9 @@ static void print_notes(const cli_view *v, const th_flow *flow, const th_solutio
 {
     const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
 
+    if (s->count > 0)
+        puts("            shift: how far the matrix's value lies from the matching function's, "
+             "which is shown");
     printf("\nCounts      growing modes: %d found", s->unstable);
     if (s->census_known)
         printf(", %d by census", s->census);

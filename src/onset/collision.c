@@ -28,7 +28,7 @@ enum { HALF_POINTS = 24 };
 /* Error of the square of the difference over the square of the radius: the sums are right to some
  * 1e-14. */
 #define SQUARE_NOISE 1e-13
-/* Rounds of the search: halving alone needs 50, each after a slow secant. */
+/* Rounds of the search: twelve secants, and a hundred of which every second one halves (root.c). */
 enum { ROUNDS = 120 };
 
 bool th_collision_isolated(const th_duo *duo)

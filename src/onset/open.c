@@ -27,7 +27,7 @@
 #define STEP_SMALL 1e-12
 /* Error of A that is taken for its noise before one is known; measured on smooth edges. */
 #define ANGLE_NOISE 1e-12
-/* Rounds for one root: halving alone needs 50, each after a slow secant. */
+/* Rounds for one root: twelve secants, and a hundred of which every second one halves (root.c). */
 enum { ROUNDS = 120 };
 
 typedef struct {

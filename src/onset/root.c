@@ -11,13 +11,14 @@
 
 /* A secant is drawn over a difference of at least this many times the noise: five digits. */
 #define SECANT_SPAN 1e5
-/* A round in which |f| does not fall to this part was slow: the next one halves the bracket. */
-#define PROGRESS 0.5
+/* Rounds of secants alone: a smooth function takes less from a poor start. Every second round after
+ * them halves the bracket, so that a hundred more leave 2^-50 of it whatever the function does. */
+enum { SECANTS = 12 };
 
 double th_root_next(th_root *root, double x, double f)
 {
+    const bool halve = ++root->rounds > SECANTS && root->rounds % 2 == 0;
     double next;
-    bool slow;
 
     if (f > 0)
         root->high = x;
@@ -26,14 +27,12 @@ double th_root_next(th_root *root, double x, double f)
     if (root->seen && fabs(f - root->f) > SECANT_SPAN * root->noise &&
         (f - root->f) / (x - root->x) > 0)
         root->slope = (f - root->f) / (x - root->x);
-    slow = root->before > 0 && fabs(f) > PROGRESS * root->before;
-    root->before = slow ? 0 : fabs(f);
     root->seen = true;
     root->x = x;
     root->f = f;
     root->step = f / root->slope;
     next = x - root->step;
-    if (slow || !(next > root->low && next < root->high))
+    if (halve || !(next > root->low && next < root->high))
         next = root->low / 2 + root->high / 2;
     return next;
 }

@@ -15,8 +15,8 @@ typedef struct {
     double noise; /* rounding error of f: secants are drawn over much larger differences only */
     double x, f;  /* the value before, once `seen` */
     bool seen;
-    double before; /* |f| then, 0: does not count */
-    double step;   /* from x to the root by the slope */
+    int rounds;
+    double step; /* from x to the root by the slope */
 } th_root;
 
 /**
