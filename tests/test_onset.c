@@ -77,7 +77,7 @@ static double cliff(double t)
 
 static double rise(double t)
 {
-    return expm1(400 * t);
+    return expm1(40 * t);
 }
 
 /* Functions on which secants crawl, or leave the bracket: found all the same, as open.c asks. */

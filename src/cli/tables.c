@@ -223,11 +223,11 @@ static th_status put_point(writer *w, const th_point *p, th_error *err)
     put_count(w->points, answered && p->census_known, p->census);
     put_count(w->points, answered, p->unstable);
     if (answered)
-        th_table_put_number(w->points, grows ? p->mode[0].omega_im * rate : 0.0);
+        th_table_put_exact(w->points, grows ? p->mode[0].omega_im * rate : 0.0);
     else
         th_table_put_nothing(w->points);
     if (grows)
-        th_table_put_number(w->points, p->mode[0].omega_re * rate);
+        th_table_put_exact(w->points, p->mode[0].omega_re * rate);
     else
         th_table_put_nothing(w->points);
     th_table_put_text(w->points, th_point_state_text(p->state));
