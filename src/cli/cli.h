@@ -84,6 +84,9 @@ const char *cli_number(double value, double error, char buffer[CLI_NUMBER]);
 /* The unit of a CSV column: the SI unit in an SI case, NULL in a reduced one. */
 const char *cli_unit(const th_case *c, th_dimension dimension);
 
+/* "open ends", "ring", "walls". */
+const char *cli_ends_text(th_ends_kind kind);
+
 /* Flow, horizons and pockets in a few lines. */
 void cli_print_flow(const th_case *c, const th_flow *flow, bool details);
 

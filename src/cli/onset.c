@@ -208,11 +208,8 @@ static void print_words(const state *w)
 
 static void print_single(const state *w, const th_onset_list *list)
 {
-    static const char *const ends[] = {
-        [TH_ENDS_OPEN] = "open ends", [TH_ENDS_RING] = "ring", [TH_ENDS_WALLS] = "walls"};
-
     print_sentence(w, list);
-    printf("Shape       %s, %s%s\n", w->c->setup.shape->name, ends[w->c->setup.ends.kind],
+    printf("Shape       %s, %s%s\n", w->c->setup.shape->name, cli_ends_text(w->c->setup.ends.kind),
            w->view.si ? "" : "; reduced units, hbar = m = 1");
     print_rows(w, list);
     print_notes(w, list);

@@ -57,7 +57,7 @@ const char *cli_unit(const th_case *c, th_dimension dimension)
     return c->scale.system == TH_SYSTEM_SI ? th_dimension_unit(dimension) : NULL;
 }
 
-static const char *ends_text(th_ends_kind kind)
+const char *cli_ends_text(th_ends_kind kind)
 {
     switch (kind) {
     case TH_ENDS_OPEN:
@@ -124,7 +124,7 @@ void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
     int edges;
 
     edge = th_flow_edges(flow, &edges);
-    printf("Flow        %s, %s%s\n", c->setup.shape->name, ends_text(ends.kind),
+    printf("Flow        %s, %s%s\n", c->setup.shape->name, cli_ends_text(ends.kind),
            v.si ? "" : "; reduced units, hbar = m = 1");
     if (ends.kind == TH_ENDS_RING)
         printf("            circumference %.6g%s, winding %d\n", ends.circumference * v.length,
