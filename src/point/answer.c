@@ -33,6 +33,7 @@ typedef struct {
     double omega_top;
     th_matching *usual, *fine;
     th_census census;
+    bool on_switch; /* the static index cannot decide: an eigenvalue of K is zero to rounding */
     th_point *point;
 } answer;
 
@@ -119,7 +120,7 @@ static bool settled(answer *a)
     for (int i = 0; i < p->count; i++)
         if (p->mode[i].label != TH_LABEL_UNSTABLE)
             return false;
-    return p->census_known && p->unstable == p->census &&
+    return p->census_known && !a->on_switch && p->unstable == p->census &&
            (!p->index_known || p->unstable == p->index);
 }
 
@@ -200,6 +201,7 @@ static th_status count(answer *a, th_error *err)
     th_error why;
     th_status st = th_index_open(a->flow, &index, &why);
 
+    a->on_switch = st == TH_EUNDECIDED;
     p->index_known = st == TH_OK;
     p->index = st == TH_OK ? index.count : 0;
     if (st == TH_OK || st == TH_EUNDECIDED || st == TH_ENONE) {
