@@ -20,11 +20,12 @@ csv:      buffer alloc io_error
 units:    alloc status
 table:    csv units version
 dispersion: units
-flow:     units csv
-case:     flow
+data:     units io_error
+flow:     data
+case:     flow buffer
 mesh:     flow dispersion
 lapack:   alloc status
-operator: mesh lapack
+operator: mesh lapack buffer
 spectrum: operator
 matching: flow dispersion
 census:   matching

@@ -177,6 +177,45 @@ def sech(speed, sound_upstream, depth, width):
                              series)
 
 
+def slope_series(a, h, grain):
+    """d/dx of a series in t = (x - x_0)/h; its last term is lost."""
+    return scaled([(m + 1) * a[m + 1] for m in range(grain.terms - 1)] + [0], 1 / h, grain)
+
+
+def continuity(speed_upstream, speed_pocket, speed_downstream, sound_upstream, width_black,
+               width_white, gap):
+    """n v = J, c^2 proportional to n: with v = c, v_h^3 = c_u^2 v_u; q = 3/4 (v'/v)^2 - v''/(2 v)."""
+    v_u, v_p, v_d, c_u = map(mpf, (speed_upstream, speed_pocket, speed_downstream, sound_upstream))
+    w_b, w_w, half = mpf(width_black), mpf(width_white), mpf(gap) / 2
+    v_h = mp.cbrt(c_u**2 * v_u)
+    x_b = -half - w_b * atanh((v_u + v_p - 2 * v_h) / (v_u - v_p))
+    x_w = half + w_w * atanh((v_d + v_p - 2 * v_h) / (v_d - v_p))
+    # zeros of v, each edge taken alone
+    zero_b, zero_w = x_b + w_b / 2 * mp.log(v_u / v_p), x_w - w_w / 2 * mp.log(v_d / v_p)
+
+    def distance(x):
+        return min(mp.hypot(x - at, w * pi / 2)
+                   for at, w in ((x_b, w_b), (zero_b, w_b), (x_w, w_w), (zero_w, w_w)))
+
+    def series(x, h, grain):
+        b = tanh_series(mp_tanh((x - x_b) / w_b), 1 / w_b, h, grain)
+        w = tanh_series(mp_tanh((x - x_w) / w_w), 1 / w_w, h, grain)
+        v = plus(constant((v_u + v_d) / 2, grain),
+                 plus(scaled(b, (v_p - v_u) / 2, grain), scaled(w, (v_d - v_p) / 2, grain)))
+        one_over = inverse(v, grain)
+        slope = slope_series(v, h, grain)
+        curve = product(slope_series(slope, h, grain), one_over, grain)
+        slope = product(slope, one_over, grain)
+        q = plus(scaled(product(slope, slope, grain), mpf(3) / 4, grain),
+                 scaled(curve, mpf(-1) / 2, grain))
+        return v, scaled(one_over, c_u**2 * v_u, grain), q
+
+    tail = TAIL / mpf(2) * max(w_b, w_w)
+    return Flow((v_u, c_u), (v_d, c_u * sqrt(v_u / v_d)),
+                [Smooth(-(tail - x_b), tail - x_b, distance, series)],
+                [Smooth(tail + x_w, -(tail + x_w), distance, series)])
+
+
 def soliton(mach, gap, n_plateau, t0, strength):
     """A uniform plateau between two pieces n = m^2 + (1 - m^2) tanh^2(kappa s + atanh t0) of V = 0
     and mu = m^2/2 + 1 (s: distance from the plateau)."""
@@ -359,7 +398,8 @@ def frequency(flow, start, grain=USUAL):
 
 
 # ---- the program ---------------------------------------------------------------------------------
-SHAPES = {"step": step, "tanh": tanh, "sech": sech, "well": well, "barriers": barriers}
+SHAPES = {"step": step, "tanh": tanh, "sech": sech, "well": well, "barriers": barriers,
+          "continuity": continuity}
 
 
 def solve(program, shape, keys):
@@ -380,7 +420,8 @@ def solve(program, shape, keys):
 # Shape, values of its keys (decimal, the same for both sides), growing modes with Re omega >= 0,
 # and their frequencies where another computation has given them before: two discretisations, which
 # agreed to 1e-12. The numbers of modes follow from the switch-on lengths passed, N of them making
-# (N + 1)/2 modes (whole part): closed forms for all but tanh, finite differences of K for tanh.
+# (N + 1)/2 modes (whole part): closed forms for all but tanh and continuity, where the
+# static index has no closed form and the number is the program's.
 FLOWS = (
     ("step", "0.75 1 0.3 1 8", 2, "0.142518475424499 0.00688361317667656 "
                                   "0.0141567448043275 0.00192438844739335"),
@@ -389,11 +430,14 @@ FLOWS = (
     ("step", "1 1.5 0.5 1.5 12", 4, "0 0.01416371444060744 0.1862445573539899 0.010908285585175 "
                                     "0.2690462675509777 0.00221631049737 "
                                     "0.0747222794599171 0.00198925014565"),
+    ("step", "1 0.8 0.5 0.7 6", 1, ""),  # supersonic everywhere
     ("tanh", "1 1.5 0.5 1.5 0.5 0.5 8", 2, ""),
     ("tanh", "1 1.35 0.55 1.45 0.4 0.8 6.5", 2, ""),
     ("sech", "1 1.5 2 4", 1, ""),
     ("well", "0.6 1.5", 2, "0 0.0989695258316815 0.645373558172 0.00243696234375"),
     ("barriers", "0.55 6", 2, ""),
+    ("continuity", "0.6 1.4 0.55 1 0.6 0.8 6", 2, ""),
+    ("continuity", "0.45 1.1 0.5 1 0.3 0.9 4", 1, ""),
 )
 KEYS = {
     "step": "speed sound_upstream sound_pocket sound_downstream gap",
@@ -401,6 +445,8 @@ KEYS = {
     "sech": "speed sound_upstream depth width",
     "well": "mach gap",
     "barriers": "mach gap",
+    "continuity": "speed_upstream speed_pocket speed_downstream sound_upstream width_black "
+                  "width_white gap",
 }
 EARLIER = mpf("1e-12")  # how well the earlier computations agreed
 ABSOLUTE = mpf("1e-11")  # frequencies of these flows are of order 0.1
@@ -455,12 +501,15 @@ def random_case(dice, shape):
     speed = dice.uniform(0.5, 1.5)
     up, down = (speed * dice.uniform(1.08, 1.8) for _ in range(2))
     pocket, gap = speed * dice.uniform(0.3, 0.92), dice.uniform(1, 14)
+    slow = dice.uniform(0.3, 0.8)
     values = {
         "step": (speed, up, pocket, down, gap),
         "tanh": (speed, up, pocket, down, dice.uniform(0.2, 1.5), dice.uniform(0.2, 1.5), gap),
         "sech": (speed, up, up**2 - pocket**2, gap / 2),
         "well": (dice.uniform(0.2, 0.9), dice.uniform(0.2, 6)),
         "barriers": (dice.uniform(0.2, 0.9), dice.uniform(0.5, 12)),
+        "continuity": (slow, dice.uniform(1.1, 1.9), slow ** (1 / 3) * dice.uniform(0.5, 0.9), 1,
+                       dice.uniform(0.2, 1.5), dice.uniform(0.2, 1.5), gap),
     }[shape]
     return {key: f"{value:.4g}" for key, value in zip(KEYS[shape].split(), values)}
 

@@ -22,7 +22,8 @@ typedef struct {
 static const struct {
     const char *name;
     int gap;
-} random_shape[] = {{"step", 4}, {"tanh", 6}, {"sech", 3}, {"well", 2}, {"barriers", 2}};
+} random_shape[] = {{"step", 4}, {"tanh", 6},     {"sech", 3},
+                    {"well", 2}, {"barriers", 2}, {"continuity", 6}};
 
 enum { RANDOM_SHAPES = sizeof random_shape / sizeof random_shape[0] };
 
@@ -74,6 +75,16 @@ static inline void draw_values(random_flow *f, uint64_t *seed)
         x[1] = c_u;
         x[2] = c_u * c_u - c_p * c_p;
         x[f->gap] = draw(seed, 0.2, 5);
+    } else if (strcmp(f->shape, "continuity") == 0) {
+        x[0] = draw(seed, 0.2, 0.95);
+        x[1] = draw(seed, 1.05, 2);
+        x[2] = draw(seed, 0.2, 0.95);
+        x[3] = 1;
+        x[4] = width_black;
+        x[5] = width_white;
+        x[f->gap] = draw(seed, 0.3, 10);
+        x[7] = draw(seed, 0, 1) < 0.5; /* transverse */
+        x[8] = x[7] > 0 ? draw_log(seed, 0.01, 10) : 0;
     } else { /* well, barriers: x[0] is the sound speed upstream, 1 in a reduced case */
         x[0] = 1;
         x[1] = draw(seed, 0.25, 0.9);
@@ -91,7 +102,9 @@ static inline th_flow *random_build(const random_flow *f)
     assert_non_null(s.shape);
     for (int i = 0; i < s.shape->keys; i++) {
         s.value[i] = f->value[i];
-        s.given[i] = true;
+        s.given[i] = th_shape_key_number(&s.shape->key[i])
+                         ? !s.shape->key[i].optional || f->value[i] != 0
+                         : true;
     }
     return th_flow_build(&s, &flow, &err) == TH_OK ? flow : NULL;
 }

@@ -24,6 +24,10 @@
     "[units]\nsystem = reduced\n[flow]\nshape = step\nspeed = 1\nsound_upstream = 1.5\n"           \
     "sound_pocket = 0.5\nsound_downstream = 1.5\ngap = 6\n"
 
+#define RING                                                                                       \
+    "[units]\nsystem = reduced\n[flow]\nshape = step\nsound_upstream = 1.5\nsound_pocket = 0.5\n"  \
+    "sound_downstream = 1.5\ngap = 6\n[ends]\nkind = ring\ncircumference = 50\nwinding = 8\n"
+
 #define STEP_SI                                                                                    \
     "[units]\nsystem = SI\n[atom]\nspecies = Rb-87\n[flow]\nshape = step\nspeed = 0.9 mm/s\n"      \
     "sound_upstream = 1.35 mm/s\nsound_pocket = 0.5 mm/s\nsound_downstream = 1300 um/s\n"          \
@@ -260,6 +264,23 @@ static void test_sweep(void **state)
     for (int i = 0; i < 5; ++i) /* relative to [flow] speed = 1 */
         assert_close(c->axis[2].value[i], 0.9 + 0.05 * i, 1e-15);
     assert_true(value_of(c, "gap") == 6.0); /* [flow] stays the base */
+    th_case_destroy(c);
+
+    /* numbers of [ends]: rings of one case with different winding */
+    c = read_good(RING "[sweep]\nwinding = 6, 7\ncircumference = -10 % to 10 % in 3\n");
+    assert_int_equal(c->axes, 2);
+    assert_string_equal(c->axis[0].name, "winding");
+    assert_int_equal(th_axis_key(c->setup.shape, c->axis[1].key)->dimension, TH_DIM_LENGTH);
+    assert_close(c->axis[1].value[0], 45.0, 1e-15);
+    {
+        th_flow_setup setup = c->setup;
+
+        th_axis_set(c->axis[0].key, c->axis[0].value[1], &setup);
+        th_axis_set(c->axis[1].key, c->axis[1].value[2], &setup);
+        assert_int_equal(setup.ends.winding, 7);
+        assert_close(setup.ends.circumference, 55.0, 1e-15);
+        assert_int_equal(c->setup.ends.winding, 8); /* the base stays */
+    }
     th_case_destroy(c);
 
     /* a list over several lines, with comments and blank lines between them */

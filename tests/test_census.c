@@ -251,6 +251,56 @@ static void test_solved(void **state)
     expect_same(flow_of("tanh", open_ends(), tanhs));
 }
 
+/* Supersonic ends. A single horizon of either sense has no growing mode, nor has a subsonic stretch
+ * between two supersonic ends. A flow that is supersonic everywhere can have one where a band
+ * reaches higher inside: frequency of 20 digits from tests/check_precision.py. Small frequencies:
+ * no slow mode is made up by the two ends. */
+static void test_supersonic(void **state)
+{
+    static const struct {
+        double c_u, c_p, c_d;
+        int weight;
+    } flow[] = {{1.5, 0.5, 0.5, 0},
+                {0.5, 0.5, 1.5, 0},
+                {0.5, 1.5, 0.5, 0},
+                {0.8, 0.9, 0.7, 0},
+                {0.8, 0.5, 0.7, 2}};
+
+    (void)state;
+    for (size_t i = 0; i < sizeof flow / sizeof flow[0]; i++) {
+        th_flow *f = step_flow(1, flow[i].c_u, flow[i].c_p, flow[i].c_d, 6);
+        found all = find_all(f);
+
+        assert_int_equal(all.weight, flow[i].weight);
+        if (flow[i].weight > 0)
+            expect_has(&all, 0.24254055486028875089, 0.0013702795005344315695, 1e-14);
+        free(all.omega);
+        th_flow_destroy(f);
+    }
+}
+
+/* A sonic end: no counting at zero frequency, and the sentence says so. */
+static void test_sonic_end(void **state)
+{
+    static const double sound[3] = {1, 1 + 1e-9, 1 - 1e-10};
+
+    (void)state;
+    for (int i = 0; i < 3; i++) {
+        th_flow *f = step_flow(1, 1.5, 0.5, sound[i], 6);
+        th_matching *m = NULL;
+        th_census census;
+        th_error err = {0};
+
+        assert_int_equal(th_matching_create(f, th_flow_band_limit(f), TH_MATCHING_USUAL, &m, &err),
+                         TH_OK);
+        assert_int_equal(th_census_count(f, m, th_flow_band_limit(f), &census, &err),
+                         TH_EUNDECIDED);
+        assert_non_null(strstr(err.text, "downstream end is so close to sonic"));
+        th_matching_destroy(m);
+        th_flow_destroy(f);
+    }
+}
+
 /* ---- rings and walls ------------------------------------------------------------------------ */
 
 static th_census count(const th_flow *flow)
@@ -480,7 +530,8 @@ int main(void)
         cmocka_unit_test(test_closed),     cmocka_unit_test(test_uniform_ring),
         cmocka_unit_test(test_bound),      cmocka_unit_test(test_switch_on),
         cmocka_unit_test(test_on_contour), cmocka_unit_test(test_errors),
-        cmocka_unit_test(test_refused),
+        cmocka_unit_test(test_refused),    cmocka_unit_test(test_supersonic),
+        cmocka_unit_test(test_sonic_end),
     };
 
     return cmocka_run_group_tests(tests, NULL, NULL);

@@ -481,6 +481,71 @@ static void test_identity(void **state)
         fail_msg("too tame: %d growing, %d negative, %d trapped", growing, negative, trapped);
 }
 
+/* The same where the density follows the speed. On the rings the winding fixes the speed outside.
+ */
+static void test_identity_density(void **state)
+{
+    uint64_t seed = 63;
+    int growing = 0, negative = 0;
+
+    (void)state;
+    for (int trial = 0; trial < 10; trial++) {
+        const bool closed = trial % 2 == 0;
+        const double scattering = trial % 4 < 2 ? 0 : draw(&seed, 0.1, 2);
+        const double value[9] = {draw(&seed, 0.5, 0.8),
+                                 draw(&seed, 1.15, 1.7),
+                                 draw(&seed, 0.5, 0.8),
+                                 1,
+                                 draw(&seed, 0.3, 0.7),
+                                 draw(&seed, 0.3, 0.7),
+                                 draw(&seed, 2, 9),
+                                 scattering > 0,
+                                 scattering};
+        th_flow_setup setup = {.shape = th_shape_find("continuity"),
+                               .density = 1.7,
+                               .ends = closed ? ring(draw(&seed, 44, 48), 5)
+                                              : walls(draw(&seed, 2, 10))};
+        th_flow *flow = NULL;
+        th_solution *s;
+        th_error err = {0};
+
+        for (int i = 0; i < 9; i++) {
+            setup.value[i] = value[i];
+            setup.given[i] = !(closed && (i == 0 || i == 2)) && (i != 8 || scattering > 0);
+        }
+        if (th_flow_build(&setup, &flow, &err) != TH_OK)
+            fail_msg("trial %d: %s", trial, err.text);
+        s = solve_to(flow, 1e-8);
+        if (s->verdict == TH_VERDICT_UNDECIDED)
+            fail_msg("trial %d: %s", trial, s->reason);
+        assert_int_equal(s->index, s->unstable + 2 * s->negative);
+        growing += s->unstable;
+        negative += s->negative;
+        th_solution_destroy(s);
+        th_flow_destroy(flow);
+    }
+    if (!(growing >= 10 && negative >= 3))
+        fail_msg("too tame: %d growing, %d negative", growing, negative);
+}
+
+/* A ring that once was undecided: its one mode of negative energy lies above the top of the band of
+ * a pocket without end, and index 2 stands for it (Hamiltonian-Krein index as above). */
+static void test_above_band(void **state)
+{
+    static const double value[5] = {0, 1.5, 0.9, 1.5, 9.05802};
+    th_flow *flow = flow_of("step", ring(12, 2), value);
+    th_solution *s = solve(flow);
+
+    (void)state;
+    assert_int_equal(s->verdict, TH_VERDICT_STABLE);
+    assert_int_equal(s->index, 2);
+    assert_int_equal(s->negative, 1);
+    assert_int_equal(s->count, 1);
+    assert_true(s->mode[0].omega_re > s->omega_top && s->mode[0].norm < 0);
+    th_solution_destroy(s);
+    th_flow_destroy(flow);
+}
+
 /* Uniform ring at supersonic speed: omega = v k +- sqrt(c^2 k^2 + k^4/4), k = 2 pi j/L, the lower
  * sign with omega > 0 being the waves of negative norm (sign of omega - v k). No pocket, no label
  * trapped. */
@@ -744,6 +809,7 @@ int main(void)
         cmocka_unit_test(test_switch_on),      cmocka_unit_test(test_damped),
         cmocka_unit_test(test_single_horizon), cmocka_unit_test(test_identity),
         cmocka_unit_test(test_uniform_ring),   cmocka_unit_test(test_far_walls),
+        cmocka_unit_test(test_above_band),     cmocka_unit_test(test_identity_density),
         cmocka_unit_test(test_scaling),        cmocka_unit_test(test_density_scale),
         cmocka_unit_test(test_norm),           cmocka_unit_test(test_words),
         cmocka_unit_test(test_undecided),      cmocka_unit_test(test_errors),

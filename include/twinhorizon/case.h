@@ -12,6 +12,10 @@
  * shape that has no sound_upstream.
  * [sweep]: `KEY = a, b, c` or `KEY = A to B in N` (2 <= N <= 1e7, both ends included, at most 1e9
  * configurations in all); values in % are relative to [flow] KEY. All values of an axis differ.
+ * A key that names a table takes its path, relative to the folder of the case file (to the current
+ * folder when --set gives it). The unit of speed of an SI case whose shape has neither
+ * sound_upstream nor speed, or leaves them out, is the median of the table's sound speeds.
+ * KEY is a number of [flow], or winding, circumference (rings) or padding (walls) of [ends].
  * A key that is swept may be absent in [flow]: the first value of its axis is then its base value.
  * Only the base configuration is built here; rules between keys may still fail at other points. */
 #ifndef TWINHORIZON_CASE_H
@@ -26,13 +30,22 @@
 extern "C" {
 #endif
 
-/* One axis of a sweep: a numeric key of [flow] and its values. */
+/* One axis of a sweep: a numeric key of [flow] or of [ends] and its values. */
 typedef struct {
-    int key;          /* index into shape->key */
-    const char *name; /* shape->key[key].key */
+    int key;          /* index into shape->key; from TH_AXIS_ENDS on keys of [ends] */
+    const char *name; /* as in the case file */
     int count;        /* >= 1 */
     double *value;    /* [count] reduced units */
 } th_axis;
+
+enum { TH_AXIS_ENDS = TH_SHAPE_KEYS_MAX };
+
+/** What an axis measures and the bounds of its values: the shape's key, or winding, circumference,
+ * padding in the same form. */
+const th_shape_key *th_axis_key(const th_shape *shape, int key);
+
+/** Put a value of an axis into a setup. */
+void th_axis_set(int key, double value, th_flow_setup *setup);
 
 /* [plan], in SI or reduced units as the case; 0 when absent. */
 typedef struct {
@@ -49,7 +62,9 @@ typedef struct {
                    overrides applied; embedded in metadata */
     th_scale scale;
     th_flow_setup setup; /* base configuration, checked: th_flow_build succeeds */
+    th_data *data;       /* the table that a key of the shape names, in reduced units; or NULL */
     bool density_given;  /* [flow] density was given; else densities are relative */
+    double loss_rate;    /* [flow], dn/dt = -loss_rate n, reduced; 0 when not given */
     double accuracy;     /* [solve] accuracy, relative to omega_max (see modes.h) */
     int axes;            /* [sweep]; 0 when absent; first axis slowest */
     th_axis *axis;       /* [axes] */

@@ -14,6 +14,7 @@
 #define TWINHORIZON_FLOW_H
 
 #include <stdbool.h>
+#include <twinhorizon/data.h>
 #include <twinhorizon/status.h>
 #include <twinhorizon/units.h>
 
@@ -63,6 +64,9 @@ typedef struct {
     const bool *uniform;       /* [pieces] n, v, c constant on the piece; NULL: none is */
     int features;              /* >= 0 */
     const th_feature *feature; /* [features] */
+    double scattering; /* equation of state: 0 contact, c^2 = g n; > 0 transverse ground state
+                          of that scattering length, mu = omega_perp sqrt(1 + 4 a n). Only
+                          the potential depends on it. */
 } th_flow_spec;
 
 typedef struct th_flow th_flow;
@@ -126,7 +130,8 @@ th_ends th_flow_ends(const th_flow *flow);
 double th_flow_flux(const th_flow *flow);                            /* J = n v */
 const th_horizon *th_flow_horizons(const th_flow *flow, int *count); /* ascending x */
 const th_pocket *th_flow_pockets(const th_flow *flow, int *count);   /* ascending x */
-double th_flow_sound_max(const th_flow *flow); /* largest c, the scale of speeds */
+double th_flow_scattering(const th_flow *flow); /* of th_flow_spec; 0 contact */
+double th_flow_sound_max(const th_flow *flow);  /* largest c, the scale of speeds */
 
 /** Flow inside a piece, edges included (their one-sided value). Open ends: piece -1 is the
  * uniform left end, piece = pieces the uniform right end. */
@@ -138,8 +143,12 @@ void th_flow_at(const th_flow *flow, double x, th_flow_point *point);
 
 /**
  * External potential that makes the flow exactly stationary, zero far upstream (at edge[0]):
- * V = mu - v^2/2 - c^2 + (sqrt n)''/(2 sqrt n), contact interaction, reduced energy.
- * Source: stationary Gross-Pitaevskii equation in density and phase form.
+ * V = mu - v^2/2 - h + (sqrt n)''/(2 sqrt n), reduced energy, with h the local chemical potential:
+ * h = c^2 for contact interaction; h = c^2 2 r/(1 + r), r = sqrt(1 + 4 a n), for the transverse
+ * equation of state, counted from its value at n = 0.
+ * Source: stationary Gross-Pitaevskii equation in density and phase form; "Effective mean-field
+ * equations for cigar-shaped and disk-shaped Bose-Einstein condensates", Phys. Rev. A 77, 013617
+ * (2008), for mu = hbar omega_perp sqrt(1 + 4 a n).
  */
 double th_flow_potential(const th_flow *flow, const th_flow_point *point);
 
@@ -154,29 +163,44 @@ double th_flow_band_limit(const th_flow *flow);
 
 /* ---- shapes: flows from a few named parameters ---------------------------------------------- */
 
-enum { TH_SHAPE_KEYS_MAX = 12 };
+enum { TH_SHAPE_KEYS_MAX = 16 };
 
 /* One parameter of a shape = one key of [flow]. */
 typedef struct {
     const char *key;
     th_dimension dimension;
-    double above;       /* the value must be > above ... */
-    double below;       /* ... and < below (HUGE_VAL: no bound) */
-    bool optional;      /* may be absent: `fallback` stands in (in the reduced unit) */
-    double fallback;    /* of optional and si_only keys */
-    bool fixed_by_ring; /* on a ring the winding fixes it: absent, or it must agree */
-    bool si_only;       /* required in SI, not accepted in reduced cases */
-    const char *doc;    /* one line for manual pages */
+    double above;            /* the value must be > above ... */
+    double below;            /* ... and < below (HUGE_VAL: no bound) */
+    bool zero;               /* above itself is allowed */
+    bool optional;           /* may be absent: `fallback` stands in (in the reduced unit) */
+    double fallback;         /* of optional and si_only keys */
+    bool fixed_by_ring;      /* on a ring the winding fixes it: absent, or it must agree */
+    bool si_only;            /* required in SI, not accepted in reduced cases */
+    bool absolute;           /* in SI it means something only beside [flow] density */
+    const char *const *word; /* the key takes one of these words, NULL ends the list; its value is
+                                the place of the word. NULL: a number */
+    bool file;       /* the key names a table, which goes to th_flow_setup.data; one a shape */
+    const char *doc; /* one line for manual pages */
 } th_shape_key;
+
+/** Whether a key takes a number: it can be swept, have a tolerance, a sensitivity. */
+static inline bool th_shape_key_number(const th_shape_key *key)
+{
+    return key->word == NULL && !key->file;
+}
+
+typedef struct th_flow_setup th_flow_setup;
 
 typedef struct th_shape {
     const char *name;
     const char *doc;
     int keys;
     th_shape_key key[TH_SHAPE_KEYS_MAX];
-    /* value[keys] in reduced units, given[keys] says which came from the user. */
-    th_status (*build)(const double *value, const bool *given, double density, const th_ends *ends,
-                       th_flow **out, th_error *err);
+    bool closes_itself; /* on a ring `build` finds the values of fixed_by_ring keys that are not
+                           given; otherwise they are 2 pi winding/circumference */
+    /* Every value of the setup is in force and within its bounds; given[] says which came from
+     * the user. */
+    th_status (*build)(const th_flow_setup *setup, th_flow **out, th_error *err);
 } th_shape;
 
 /** The table of shapes; index 0 <= i < th_shape_count(). */
@@ -185,13 +209,14 @@ const th_shape *th_shape_at(int i);
 const th_shape *th_shape_find(const char *name); /* NULL when unknown */
 
 /* A shape with its values: everything needed to build the flow of one configuration. */
-typedef struct {
+struct th_flow_setup {
     const th_shape *shape;
     double value[TH_SHAPE_KEYS_MAX]; /* reduced units, order of shape->key */
     bool given[TH_SHAPE_KEYS_MAX];
-    double density; /* upstream line density, reduced; 1 when not given */
+    double density;      /* upstream line density, reduced; 1 when not given */
+    const th_data *data; /* borrowed, reduced units; of a shape with a key that names a file */
     th_ends ends;
-} th_flow_setup;
+};
 
 /**
  * Build the flow of a setup. Every key of the shape must be given, except optional and si_only ones

@@ -50,11 +50,12 @@ void th_matching_destroy(th_matching *matching);
 /**
  * Evaluate F.
  *
- * Open ends: F = E/omega, E the determinant of the two solutions that leave to the left and the
- * two that leave to the right, end vectors divided by (k1 - k2) so that E is analytic, and the
- * plane-wave factors of the tails between ends and horizons taken out. Walls: F = E with the
- * fluctuation zero at both. Ring: F = E/omega^2, E = det(M - 1) with M the transfer matrix once
- * around, evaluated in cyclic form.
+ * Open ends: F = E/omega, or E itself where both ends are supersonic (E(0) is then not zero: no
+ * solution that is constant far upstream leaves there); E the determinant of the two solutions that
+ * leave to the left and the two that leave to the right, end vectors divided by (k1 - k2) so that E
+ * is analytic, and the plane-wave factors of the tails between ends and horizons taken out. Walls:
+ * F = E with the fluctuation zero at both. Ring: F = E/omega^2, E = det(M - 1) with M the transfer
+ * matrix once around, evaluated in cyclic form.
  *
  * @param[in]  slope  also compute dF/domega (exact, carried through all steps)
  * @retval TH_EINVAL     omega is zero or not finite

@@ -9,6 +9,8 @@
 
 #include "../buffer.h"
 
+#include <inttypes.h>
+#include <stdio.h>
 #include <string.h>
 
 /* Lines are broken before this column where they can be: half of what the reader takes. */
@@ -53,6 +55,16 @@ static void write_entry(th_buffer *text, const th_case_entry *entry)
     th_buffer_text(text, "\n");
 }
 
+/* A comment that differs when the table does: the case is its text. */
+static void write_table(th_buffer *text, const th_data *data)
+{
+    char line[96];
+
+    (void)snprintf(line, sizeof line, "; the table: %d rows, hash %016" PRIx64 "\n",
+                   th_data_rows(data), th_data_hash(data));
+    th_buffer_text(text, line);
+}
+
 static void write_section(th_buffer *text, const th_case_source *source, const th_case *c,
                           th_case_section section)
 {
@@ -69,6 +81,8 @@ static void write_section(th_buffer *text, const th_case_source *source, const t
         th_buffer_text(text, "]\n");
     }
 
+    if (section == TH_SECTION_FLOW && c->data != NULL)
+        write_table(text, c->data);
     do { /* all entries of the smallest rank above the last one */
         next = -1;
         for (int i = 0; i < source->entries; ++i) {

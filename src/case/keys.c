@@ -5,7 +5,7 @@
  * In: names as the user wrote them, and the shape. Out: rows of the table in keys.h, or a
  * sentence with the nearest valid name. Calls flow (table of shapes), units (quoting), status.
  * Symbols: none. To add a key: keys.h. Proved by tests/test_case.c and tests/broken. */
-#include "keys.h"
+#include "inside.h"
 
 #include "../units/text.h"
 
@@ -179,9 +179,17 @@ th_status th_case_key_check(const th_shape *shape, const char *section, const ch
     bool tolerated = which == TH_SECTION_PLAN && strncmp(key, TH_TOLERANCE_PREFIX, prefix) == 0;
     int count = 0;
 
-    if ((of_shape && th_shape_key_find(shape, key) >= 0) ||
-        (tolerated && th_shape_key_find(shape, key + prefix) >= 0))
+    if (which == TH_SECTION_SWEEP && th_case_axis_find(shape, key) >= 0)
         return TH_OK;
+    if (of_shape || tolerated) {
+        int k = th_shape_key_find(shape, key + (tolerated ? prefix : 0));
+
+        if (k >= 0 && (which == TH_SECTION_FLOW || th_shape_key_number(&shape->key[k])))
+            return TH_OK;
+        if (k >= 0)
+            return th_fail(err, TH_EINVAL, "%s is no number: it %s", shape->key[k].key,
+                           tolerated ? "takes no tolerance" : "cannot be swept");
+    }
     if (which == TH_SECTION_SWEEP && th_case_key_find("flow", key) != TH_KEYS)
         return th_fail(err, TH_EINVAL, "%s cannot be swept, only the numbers of the shape can",
                        key);

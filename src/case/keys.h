@@ -32,6 +32,8 @@
     X(SHAPE, "flow", "shape", TH_DIM_NUMBER, "required: the shape of the flow, see its own keys")  \
     X(DENSITY, "flow", "density", TH_DIM_LINE_DENSITY,                                             \
       "upstream line density, default: densities relative to upstream; > 0")                       \
+    X(LOSS_RATE, "flow", "loss_rate", TH_DIM_RATE,                                                 \
+      "rate at which atoms are lost, dn/dt = -loss_rate n, default 0; >= 0")                       \
     X(KIND, "ends", "kind", TH_DIM_NUMBER,                                                         \
       "open (default): the flow goes on for ever; ring: it closes on itself; walls: a hard box")   \
     X(CIRCUMFERENCE, "ends", "circumference", TH_DIM_LENGTH,                                       \
@@ -44,7 +46,7 @@
       "wanted error of a frequency relative to the top of the negative-energy band, default "      \
       "1e-9; 1e-12 to 1e-3")                                                                       \
     X(SWEEP_AXIS, "sweep", "KEY", TH_DIM_NUMBER,                                                   \
-      "axis over a numeric key of the shape: `a, b, c`, or `A to B in N` with both ends "          \
+      "axis over a number of the shape or of [ends]: `a, b, c`, or `A to B in N` with both ends "  \
       "included; `-10 % to 10 % in N` is relative to the value in [flow]; first axis slowest")     \
     X(HOLD_TIME, "plan", "hold_time", TH_DIM_TIME, "time for which the flow is held; > 0")         \
     X(LIFETIME, "plan", "lifetime", TH_DIM_TIME, "1/e lifetime of the cloud; > 0")                 \

@@ -30,29 +30,6 @@
 /* More shapes than there will be: room for their names in a message. */
 enum { SHAPES_MAX = 32 };
 
-/* What is known of the shape's keys while they are read. */
-typedef struct {
-    const th_case_entry *entry[TH_SHAPE_KEYS_MAX]; /* [flow], else [sweep]; NULL: absent */
-    double raw[TH_SHAPE_KEYS_MAX];
-} flow_values;
-
-/* Which of a few words an entry holds. */
-static th_status read_word(const th_case_source *source, const th_case_entry *entry,
-                           const char *const *word, int words, int *which, th_error *err)
-{
-    char list[160] = "";
-    size_t used = 0;
-
-    for (*which = 0; *which < words; ++*which)
-        if (strcmp(entry->value, word[*which]) == 0)
-            return TH_OK;
-    for (int i = 0; i < words && used < sizeof list; ++i)
-        used +=
-            (size_t)snprintf(list + used, sizeof list - used, "%s%s", i > 0 ? ", " : "", word[i]);
-    return th_case_blame(err, source, entry, "want one of %s; the nearest is %s", list,
-                         th_case_nearest(entry->value, word, words));
-}
-
 static th_status read_system(const th_case_source *source, th_system *system, th_error *err)
 {
     static const char *const word[] = {"reduced", "SI"};
@@ -63,7 +40,7 @@ static th_status read_system(const th_case_source *source, th_system *system, th
     if (entry == NULL)
         return th_case_blame_missing(err, source, th_case_key_section(TH_KEY_SYSTEM),
                                      th_case_key_name(TH_KEY_SYSTEM), "want reduced or SI");
-    st = read_word(source, entry, word, 2, &which, err);
+    st = th_case_word(source, entry, word, 2, &which, err);
     *system = which == 0 ? TH_SYSTEM_REDUCED : TH_SYSTEM_SI;
     return st;
 }
@@ -81,7 +58,7 @@ static th_status read_shape(const th_case_source *source, const th_shape **shape
         return th_case_blame_missing(err, source, th_case_key_section(TH_KEY_SHAPE),
                                      th_case_key_name(TH_KEY_SHAPE),
                                      "want the shape of the flow, such as %s", name[0]);
-    st = read_word(source, entry, name, shapes, &which, err);
+    st = th_case_word(source, entry, name, shapes, &which, err);
     *shape = st == TH_OK ? th_shape_at(which) : NULL;
     return st;
 }
@@ -147,7 +124,7 @@ static th_status read_ends(const th_case_source *source, th_ends *ends, th_error
     th_status st;
 
     if (entry != NULL) {
-        st = read_word(source, entry, word, 3, &which, err);
+        st = th_case_word(source, entry, word, 3, &which, err);
         if (st != TH_OK)
             return st;
     }
@@ -175,118 +152,6 @@ static th_status read_ends(const th_case_source *source, th_ends *ends, th_error
     return TH_OK;
 }
 
-/* Whether a key of the shape must be there. */
-static bool is_needed(const th_shape_key *key, th_system system, th_ends_kind ends)
-{
-    if (key->fixed_by_ring && ends == TH_ENDS_RING)
-        return false;
-    return key->si_only ? system == TH_SYSTEM_SI : !key->optional;
-}
-
-/* The shape's keys as raw values: from [flow], else the first value of the key's axis. */
-static th_status read_flow(const th_case_source *source, th_system system, const th_case_axis *axis,
-                           int axes, const th_flow_setup *setup, flow_values *out, th_error *err)
-{
-    const char *section = th_case_section_name(TH_SECTION_FLOW);
-    const th_case_axis *swept[TH_SHAPE_KEYS_MAX] = {NULL};
-
-    for (int i = 0; i < axes; ++i)
-        swept[axis[i].key] = &axis[i];
-    for (int k = 0; k < setup->shape->keys; ++k) {
-        const th_shape_key *key = &setup->shape->key[k];
-        const th_case_entry *entry = th_case_source_find(source, section, key->key);
-        const th_case_axis *a = swept[k];
-        th_error why;
-
-        if (a != NULL && key->fixed_by_ring && setup->ends.kind == TH_ENDS_RING)
-            return th_case_blame(err, source, a->entry,
-                                 "on a ring the winding fixes it, so it cannot be swept");
-        if (a != NULL && a->relative && entry == NULL)
-            return th_case_blame(err, source, a->entry,
-                                 "values in %% are relative to [flow] %s, which is missing",
-                                 key->key);
-        out->entry[k] = entry != NULL ? entry : a != NULL ? a->entry : NULL;
-        if (out->entry[k] == NULL) {
-            if (is_needed(key, system, setup->ends.kind))
-                return th_case_blame_missing(err, source, section, key->key,
-                                             "shape %s needs it: %s", setup->shape->name, key->doc);
-            continue;
-        }
-        if (key->si_only && system == TH_SYSTEM_REDUCED)
-            return th_case_blame(err, source, out->entry[k], "only an SI case takes it: %s",
-                                 key->doc);
-        if (entry == NULL)
-            out->raw[k] = a->value[0];
-        else if (th_case_raw(system, entry->value, key->dimension, &out->raw[k], &why) != TH_OK)
-            return th_case_blame(err, source, entry, "%s", why.text);
-    }
-    return TH_OK;
-}
-
-/* The scale: 1 throughout, or from the mass and the speed that is the unit. */
-static th_status read_scale(const th_case_source *source, th_system system, double mass,
-                            const th_shape *shape, const flow_values *values, th_scale *out,
-                            th_error *err)
-{
-    static const char *const unit[] = {"sound_upstream", "speed"};
-    const char *missing = NULL;
-
-    if (system == TH_SYSTEM_REDUCED) {
-        *out = th_scale_reduced();
-        return TH_OK;
-    }
-    for (size_t i = 0; i < sizeof unit / sizeof unit[0]; ++i) {
-        int k = th_shape_key_find(shape, unit[i]);
-        th_error why;
-
-        if (k < 0)
-            continue;
-        missing = unit[i];
-        if (values->entry[k] == NULL)
-            continue;
-        if (!(values->raw[k] > 0.0))
-            return th_case_blame(err, source, values->entry[k],
-                                 "%s must be > 0: it is the unit of speed of an SI case", unit[i]);
-        if (th_scale_si(mass, values->raw[k], out, &why) != TH_OK)
-            return th_case_blame(err, source, values->entry[k], "%s", why.text);
-        return TH_OK;
-    }
-    if (missing == NULL)
-        return th_fail(err, TH_EBUG, "shape %s has neither sound_upstream nor speed", shape->name);
-    return th_case_blame_missing(err, source, th_case_section_name(TH_SECTION_FLOW), missing,
-                                 "an SI case takes its unit of speed from it");
-}
-
-/* The base configuration in reduced units, each value within its own bounds. */
-static th_status read_base(const th_case_source *source, const flow_values *values, th_case *out,
-                           th_error *err)
-{
-    th_flow_setup *setup = &out->setup;
-    th_status st;
-
-    for (int k = 0; k < setup->shape->keys; ++k) {
-        const th_shape_key *key = &setup->shape->key[k];
-        th_error why;
-
-        setup->given[k] = values->entry[k] != NULL;
-        setup->value[k] = key->fallback;
-        if (!setup->given[k])
-            continue;
-        setup->value[k] = values->raw[k] / th_scale_factor(&out->scale, key->dimension);
-        if (th_case_in_bounds(&out->scale, key, setup->value[k], &why) != TH_OK)
-            return th_case_blame(err, source, values->entry[k], "%s", why.text);
-    }
-    setup->density = 1.0;
-    out->density_given = th_case_source_key(source, TH_KEY_DENSITY) != NULL;
-    st = th_case_quantity(source, &out->scale, TH_KEY_DENSITY, false, &setup->density, err);
-    if (st == TH_OK)
-        st = th_case_quantity(source, &out->scale, TH_KEY_CIRCUMFERENCE, false,
-                              &setup->ends.circumference, err);
-    if (st == TH_OK)
-        st = th_case_quantity(source, &out->scale, TH_KEY_PADDING, true, &setup->ends.padding, err);
-    return st;
-}
-
 static th_status read_solve(const th_case_source *source, th_case *out, th_error *err)
 {
     const th_case_entry *entry = th_case_source_key(source, TH_KEY_ACCURACY);
@@ -302,45 +167,10 @@ static th_status read_solve(const th_case_source *source, th_case *out, th_error
     return TH_OK;
 }
 
-/* Build the base flow once: rules between keys. The key that the flow names is found in the case.
- */
-static th_status check_flow(const th_case_source *source, const th_case *c,
-                            const flow_values *values, th_error *err)
-{
-    const th_case_entry *entry = NULL;
-    th_flow *flow = NULL;
-    char units[96] = "";
-    th_error why = {.status = TH_OK};
-    th_status st = th_flow_build(&c->setup, &flow, &why);
-    int k;
-
-    th_flow_destroy(flow);
-    if (st == TH_OK)
-        return TH_OK;
-    if (st != TH_EINVAL)
-        return th_fail(err, st, "%s", why.text);
-    if (c->scale.system == TH_SYSTEM_SI) {
-        char length[32], speed[32];
-
-        th_number_write(c->scale.length, length, sizeof length);
-        th_number_write(c->scale.speed, speed, sizeof speed);
-        (void)snprintf(units, sizeof units, " (in units of %s m and %s m/s)", length, speed);
-    }
-    k = th_shape_key_find(c->setup.shape, why.key);
-    if (k >= 0)
-        entry = values->entry[k];
-    for (int i = 0; i < TH_KEYS && entry == NULL; ++i)
-        if (strcmp(th_case_key_name((th_case_key_id)i), why.key) == 0)
-            entry = th_case_source_key(source, (th_case_key_id)i);
-    if (entry != NULL)
-        return th_case_blame(err, source, entry, "%s%s", why.text, units);
-    return th_case_blame_line(err, source->name, 0, "%s%s", why.text, units);
-}
-
 static th_status read_sections(const th_case_source *source, th_case *out, th_error *err)
 {
     th_case_axis *axis = NULL;
-    flow_values values = {.entry = {NULL}};
+    th_case_flow values = {.entry = {NULL}};
     th_system system = TH_SYSTEM_REDUCED;
     double mass = 1.0;
     int axes = 0;
@@ -358,11 +188,12 @@ static th_status read_sections(const th_case_source *source, th_case *out, th_er
     if (st == TH_OK)
         st = th_case_axes_read(source, out->setup.shape, system, &axis, &axes, err);
     if (st == TH_OK)
-        st = read_flow(source, system, axis, axes, &out->setup, &values, err);
+        st = th_case_flow_read(source, system, axis, axes, &out->setup, &out->data, &values, err);
     if (st == TH_OK)
-        st = read_scale(source, system, mass, out->setup.shape, &values, &out->scale, err);
+        st = th_case_scale_read(source, system, mass, out->setup.shape, out->data, &values,
+                                &out->scale, err);
     if (st == TH_OK)
-        st = read_base(source, &values, out, err);
+        st = th_case_base_read(source, &values, out, err);
     if (st == TH_OK)
         st = read_solve(source, out, err);
     if (st == TH_OK)
@@ -370,7 +201,7 @@ static th_status read_sections(const th_case_source *source, th_case *out, th_er
     if (st == TH_OK)
         st = th_case_plan_read(source, out, err);
     if (st == TH_OK)
-        st = check_flow(source, out, &values, err);
+        st = th_case_flow_check(source, out, &values, err);
     if (st == TH_OK)
         st = th_case_text_write(source, out, err);
     th_case_axes_free(axis, axes);
@@ -470,6 +301,7 @@ void th_case_destroy(th_case *c)
     for (int i = 0; i < c->axes; ++i)
         free(c->axis[i].value);
     free(c->axis);
+    th_data_destroy(c->data);
     free(c->path);
     free(c->text);
     free(c);

@@ -12,6 +12,7 @@
 #include "../alloc.h"
 #include "../units/text.h"
 
+#include <limits.h>
 #include <math.h>
 #include <string.h>
 
@@ -19,6 +20,62 @@
  * configuration that fits an int. No machine gets through as many. */
 #define AXIS_MAX  1e7
 #define SWEEP_MAX 1e9
+
+/* Numbers of [ends] that can be swept, from TH_AXIS_ENDS on. */
+enum { WINDING, CIRCUMFERENCE, PADDING, ENDS_KEYS };
+static const th_shape_key ends_key[ENDS_KEYS] = {
+    [WINDING] = {.key = "winding",
+                 .dimension = TH_DIM_NUMBER,
+                 .below = INT_MAX,
+                 .doc = "closed integral of v dx over 2 pi hbar/m"},
+    [CIRCUMFERENCE] = {.key = "circumference",
+                       .dimension = TH_DIM_LENGTH,
+                       .below = HUGE_VAL,
+                       .doc = "length of the ring"},
+    [PADDING] = {.key = "padding",
+                 .dimension = TH_DIM_LENGTH,
+                 .below = HUGE_VAL,
+                 .zero = true,
+                 .doc = "uniform length beyond each end of the flow"}};
+
+const th_shape_key *th_axis_key(const th_shape *shape, int key)
+{
+    return key < TH_AXIS_ENDS ? &shape->key[key] : &ends_key[key - TH_AXIS_ENDS];
+}
+
+void th_axis_set(int key, double value, th_flow_setup *setup)
+{
+    if (key < TH_AXIS_ENDS) {
+        setup->value[key] = value;
+        setup->given[key] = true;
+    } else if (key == TH_AXIS_ENDS + WINDING) {
+        setup->ends.winding = (int)value;
+    } else if (key == TH_AXIS_ENDS + CIRCUMFERENCE) {
+        setup->ends.circumference = value;
+    } else {
+        setup->ends.padding = value;
+    }
+}
+
+static double base_of(const th_flow_setup *setup, int key)
+{
+    return key < TH_AXIS_ENDS                    ? setup->value[key]
+           : key == TH_AXIS_ENDS + WINDING       ? setup->ends.winding
+           : key == TH_AXIS_ENDS + CIRCUMFERENCE ? setup->ends.circumference
+                                                 : setup->ends.padding;
+}
+
+int th_case_axis_find(const th_shape *shape, const char *key)
+{
+    int found = th_shape_key_find(shape, key);
+
+    if (found >= 0)
+        return th_shape_key_number(&shape->key[found]) ? found : -1;
+    for (int i = 0; i < ENDS_KEYS; ++i)
+        if (strcmp(ends_key[i].key, key) == 0)
+            return TH_AXIS_ENDS + i;
+    return -1;
+}
 
 /* One number of an axis: raw, or with % a part of the base value. */
 static th_status read_item(th_system system, const char *text, th_dimension dimension,
@@ -131,10 +188,18 @@ th_status th_case_axes_read(const th_case_source *source, const th_shape *shape,
 
         if (strcmp(entry->section, section) != 0)
             continue;
-        ++*axes; /* names were checked, and none stands twice: they fit */
+        if (*axes == TH_SHAPE_KEYS_MAX)
+            return th_case_blame(err, source, entry, "a sweep has at most %d axes",
+                                 TH_SHAPE_KEYS_MAX);
+        a->key = th_case_axis_find(shape, entry->key); /* names were checked */
         a->entry = entry;
-        a->key = th_shape_key_find(shape, entry->key);
-        st = read_axis(system, entry->value, shape->key[a->key].dimension, a, &why);
+        ++*axes;
+        if (a->key >= TH_AXIS_ENDS && th_case_source_find(source, "ends", entry->key) == NULL)
+            return th_case_blame(err, source, entry,
+                                 "only ends that have it can be swept over it, "
+                                 "and [ends] has no %s",
+                                 entry->key);
+        st = read_axis(system, entry->value, th_axis_key(shape, a->key)->dimension, a, &why);
         if (st == TH_ENOMEM)
             return th_fail(err, st, "%s", why.text);
         if (st != TH_OK)
@@ -193,8 +258,8 @@ static th_status find_repeat(const double *value, int count, bool *repeats, doub
 static th_status finish_axis(const th_case_source *source, th_case_axis *a, const th_case *c,
                              th_error *err)
 {
-    const th_shape_key *key = &c->setup.shape->key[a->key];
-    double base = c->setup.value[a->key], factor = th_scale_factor(&c->scale, key->dimension);
+    const th_shape_key *key = th_axis_key(c->setup.shape, a->key);
+    double base = base_of(&c->setup, a->key), factor = th_scale_factor(&c->scale, key->dimension);
     double which = 0.0;
     bool repeats = false;
     th_error why;
@@ -205,6 +270,9 @@ static th_status finish_axis(const th_case_source *source, th_case_axis *a, cons
         st = th_case_in_bounds(&c->scale, key, a->value[i], &why);
         if (st != TH_OK)
             return th_case_blame(err, source, a->entry, "%s", why.text);
+        if (a->key == TH_AXIS_ENDS + WINDING && a->value[i] != floor(a->value[i]))
+            return th_case_blame(err, source, a->entry, "winding must be a whole number, not %.15g",
+                                 a->value[i]);
     }
     st = find_repeat(a->value, a->count, &repeats, &which, err);
     if (st == TH_OK && repeats) {
@@ -232,7 +300,7 @@ th_status th_case_axes_finish(const th_case_source *source, th_case_axis *axis, 
         if (st != TH_OK)
             return st;
         out->axis[out->axes] = (th_axis){.key = a->key,
-                                         .name = out->setup.shape->key[a->key].key,
+                                         .name = th_axis_key(out->setup.shape, a->key)->key,
                                          .count = a->count,
                                          .value = a->value};
         a->value = NULL; /* now the case's */

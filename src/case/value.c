@@ -53,15 +53,24 @@ th_status th_case_in_bounds(const th_scale *scale, const th_shape_key *key, doub
 {
     char above[64], below[64], shown[64];
 
-    if (isfinite(value) && value > key->above && value < key->below)
+    const char *than = key->zero ? ">=" : ">";
+
+    if (!th_shape_key_number(key) ||
+        (isfinite(value) && (value > key->above || (key->zero && value == key->above)) &&
+         value < key->below))
         return TH_OK;
     th_case_show(scale, key->dimension, value, shown, sizeof shown);
     th_case_show(scale, key->dimension, key->above, above, sizeof above);
+    if (key->dimension == TH_DIM_SPEED && value < 0)
+        return th_fail(err, TH_EINVAL,
+                       "%s must be %s %s, not %s: x runs along the flow, so a flow to the left is "
+                       "described by its mirror image",
+                       key->key, than, above, shown);
     if (!isfinite(key->below))
-        return th_fail(err, TH_EINVAL, "%s must be > %s, not %s", key->key, above, shown);
+        return th_fail(err, TH_EINVAL, "%s must be %s %s, not %s", key->key, than, above, shown);
     th_case_show(scale, key->dimension, key->below, below, sizeof below);
-    return th_fail(err, TH_EINVAL, "%s must be > %s and < %s, not %s", key->key, above, below,
-                   shown);
+    return th_fail(err, TH_EINVAL, "%s must be %s %s and < %s, not %s", key->key, than, above,
+                   below, shown);
 }
 
 th_status th_case_quantity(const th_case_source *source, const th_scale *scale, th_case_key_id id,
@@ -110,4 +119,20 @@ bool th_case_split(const char *text, char a[TH_PART_MAX], char b[TH_PART_MAX], c
     copy_part(to + 4, in != NULL ? in : end, b);
     copy_part(in != NULL ? in + 4 : end, end, n);
     return true;
+}
+
+th_status th_case_word(const th_case_source *source, const th_case_entry *entry,
+                       const char *const *word, int words, int *which, th_error *err)
+{
+    char list[160] = "";
+    size_t used = 0;
+
+    for (*which = 0; *which < words; ++*which)
+        if (strcmp(entry->value, word[*which]) == 0)
+            return TH_OK;
+    for (int i = 0; i < words && used < sizeof list; ++i)
+        used +=
+            (size_t)snprintf(list + used, sizeof list - used, "%s%s", i > 0 ? ", " : "", word[i]);
+    return th_case_blame(err, source, entry, "want one of %s; the nearest is %s", list,
+                         th_case_nearest(entry->value, word, words));
 }

@@ -30,8 +30,11 @@ static const double neutral_floor = 1e-5;
 /* Below the real axis F is analytic up to the nearest place where two wave numbers of an end
  * coincide; the contour around the slow modes stays this share of the way to it. */
 static const double inside_branch = 0.3;
+/* A circle narrower than this share of the usual one is lost in rounding. */
+static const double narrowest_circle = 1e-4;
 
-/* Distance from omega = 0 to that place for a subsonic end; closed form of d omega/d k = 0,
+/* Distance from omega = 0 to that place: the top of its band for a supersonic end, 0 for a sonic
+ * one; for a subsonic one the closed form of d omega/d k = 0,
  *     kappa^2 = 2 (c^2 - v^2/4 - sqrt(v^4/16 + v^2 c^2/2)),
  *     omega = -i kappa (sqrt(c^2 - kappa^2/4) - v),
  * written so that nothing cancels when v is close to c. */
@@ -42,7 +45,7 @@ static double branch_distance(const th_flow *flow, int piece, double x)
 
     th_flow_eval(flow, piece, x, &at);
     if (!(at.v < at.c))
-        return HUGE_VAL;
+        return th_band_top(at.v, at.c);
     v2 = at.v * at.v;
     c2 = at.c * at.c;
     kappa2 = 2.0 * c2 * (at.c - at.v) * (at.c + at.v) /
@@ -52,16 +55,22 @@ static double branch_distance(const th_flow *flow, int piece, double x)
 }
 
 /* Radius of the contour around the slow modes of open ends. */
-static double slow_radius(const th_flow *flow, double top)
+static th_status slow_radius(const th_flow *flow, double top, double *radius, th_error *err)
 {
     const double *edge;
-    double branch;
+    double branch[2];
     int edges;
 
     edge = th_flow_edges(flow, &edges);
-    branch =
-        fmin(branch_distance(flow, -1, edge[0]), branch_distance(flow, edges - 1, edge[edges - 1]));
-    return fmin(innermost * top, inside_branch * branch);
+    branch[0] = branch_distance(flow, -1, edge[0]);
+    branch[1] = branch_distance(flow, edges - 1, edge[edges - 1]);
+    *radius = fmin(innermost * top, inside_branch * fmin(branch[0], branch[1]));
+    if (*radius >= narrowest_circle * innermost * top)
+        return TH_OK;
+    return th_fail(err, TH_EUNDECIDED,
+                   "the %s end is so close to sonic (v = c) that the matching function branches "
+                   "within %.1e of zero frequency, where modes cannot be counted",
+                   branch[0] <= branch[1] ? "upstream" : "downstream", fmin(branch[0], branch[1]));
 }
 
 static th_status whole(double turns, const char *what, int *count, th_error *err)
@@ -157,9 +166,10 @@ th_status th_region_count(const th_flow *flow, const th_matching *matching, doub
     top = fmax(omega_top, narrowest_band * sound * sound);
     r->census.re_max = beyond * top;
     r->census.floor = open ? 0.0 : neutral_floor * top;
-    r->census.slowest = open ? slow_radius(flow, top) : 0.0;
     r->census.im_max = fmax(th_growth_bound(flow), 10.0 * neutral_floor * top);
-    st = bottom(r, matching, err);
+    st = open ? slow_radius(flow, top, &r->census.slowest, err) : TH_OK;
+    if (st == TH_OK)
+        st = bottom(r, matching, err);
     if (st == TH_OK)
         st = lid(r, matching, err);
     if (st == TH_OK)

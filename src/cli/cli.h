@@ -107,6 +107,12 @@ th_status cli_modes_write(const th_case *c, const th_flow *flow, const th_soluti
 /* Print d omega / d key of every growing mode. */
 th_status cli_print_sensitivity(const th_case *c, const th_solution *s, th_error *err) TH_MUST_USE;
 
+/* ---- remarks.c ------------------------------------------------------------------------------ */
+
+/* What stands beside an answer: how far a box is from open ends, and for how long a flow that loses
+ * atoms is the flow that was solved. Computes, then prints. */
+th_status cli_print_remarks(const th_case *c, const th_solution *s, th_error *err) TH_MUST_USE;
+
 /* ---- commands, one file each ---------------------------------------------------------------- */
 
 int cli_solve(int argc, char **argv);

@@ -68,7 +68,7 @@ static th_status start_table(state *w, const char *path, th_error *err)
     int columns = 0;
 
     for (int a = 0; a < c->axes; a++) {
-        const th_shape_key *key = &c->setup.shape->key[c->axis[a].key];
+        const th_shape_key *key = th_axis_key(c->setup.shape, c->axis[a].key);
 
         if (key != w->key)
             column[columns++] = (th_column){.name = key->key,
@@ -91,7 +91,7 @@ static th_status put_rows(state *w, const th_onset_point *point, th_error *err)
         const th_onset *o = &point->list->onset[i];
 
         for (int a = 0; a < point->axes; a++) {
-            const th_shape_key *key = &w->c->setup.shape->key[point->axis[a]->key];
+            const th_shape_key *key = th_axis_key(w->c->setup.shape, point->axis[a]->key);
 
             th_table_put_number(w->table, point->value[a] * th_scale_factor(scale, key->dimension));
         }
@@ -220,7 +220,7 @@ static void print_point(const state *w, const th_onset_point *point)
 {
     for (int a = 0; a < point->axes; a++) {
         fputs(a == 0 ? "At " : ", ", stdout);
-        print_value(w, &w->c->setup.shape->key[point->axis[a]->key], point->value[a]);
+        print_value(w, th_axis_key(w->c->setup.shape, point->axis[a]->key), point->value[a]);
     }
     fputs(": ", stdout);
     print_sentence(w, point->list);

@@ -116,9 +116,6 @@ static void print_notes(const cli_view *v, const th_flow *flow, const th_solutio
         printf("Note        %d zero modes of the ring (the free phase and its partner) recognised "
                "and set aside\n",
                s->zero_modes);
-    if (th_flow_ends(flow).kind == TH_ENDS_WALLS)
-        puts(
-            "Note        walls reflect sound: growth rates are those of the box, not of open ends");
     if (s->absorbing)
         puts("Note        an end is supersonic: in the matrix it carries an absorbing layer");
 }
@@ -258,6 +255,8 @@ int cli_solve(int argc, char **argv)
         st = cli_modes_write(c, flow, s, modes, &err);
     if (st == TH_OK && !only_table)
         print_all(c, flow, s);
+    if (st == TH_OK && !only_table)
+        st = cli_print_remarks(c, s, &err);
     if (st == TH_OK && sensitivity != NULL)
         st = cli_print_sensitivity(c, s, &err);
     if (st != TH_OK)

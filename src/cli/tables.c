@@ -52,7 +52,7 @@ th_status cli_make_folder(const char *folder, th_error *err)
 static int axis_columns(const th_case *c, th_column *column)
 {
     for (int a = 0; a < c->axes; a++) {
-        const th_shape_key *key = &c->setup.shape->key[c->axis[a].key];
+        const th_shape_key *key = th_axis_key(c->setup.shape, c->axis[a].key);
 
         column[a] = (th_column){.name = key->key,
                                 .title = key->doc,
@@ -145,7 +145,7 @@ static void put_axes(th_table *table, const th_case *c, long number)
 
     th_sweep_values(c, number, value);
     for (int a = 0; a < c->axes; a++) {
-        const th_shape_key *key = &c->setup.shape->key[c->axis[a].key];
+        const th_shape_key *key = th_axis_key(c->setup.shape, c->axis[a].key);
 
         th_table_put_number(table, value[a] * th_scale_factor(&c->scale, key->dimension));
     }

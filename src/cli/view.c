@@ -115,6 +115,24 @@ static void print_pockets(const cli_view *v, const th_flow *flow)
                2.0 * M_PI / p[i].undulation * v->length, v->micrometres);
 }
 
+/* The transverse frequency that the equation of state implies: c^2 = omega_perp 2 a n/r with
+ * r = sqrt(1 + 4 a n). */
+static void print_transverse(const cli_view *v, const th_flow *flow)
+{
+    const double a = th_flow_scattering(flow);
+    th_flow_point at;
+    int edges;
+    double an;
+
+    if (!(a > 0.0))
+        return;
+    th_flow_eval(flow, 0, th_flow_edges(flow, &edges)[0], &at);
+    an = a * at.n;
+    printf("            transverse equation of state: a n = %.4g upstream, transverse frequency "
+           "%.6g%s\n",
+           an, at.c * at.c * sqrt(1.0 + 4.0 * an) / (2.0 * an) * v->frequency, v->hertz);
+}
+
 void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
 {
     const cli_view v = cli_view_of(c);
@@ -146,6 +164,7 @@ void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
         if (ends.kind == TH_ENDS_OPEN)
             th_flow_eval(flow, edges - 1, edge[edges - 1], &at);
         print_state(&v, "downstream", &at);
+        print_transverse(&v, flow);
         printf("            flux n v = %.6g%s, pieces between x =",
                th_flow_flux(flow) * v.speed * v.density,
                v.si ? (c->density_given ? " /ms" : " mm/s (density relative to upstream)") : "");

@@ -68,6 +68,9 @@ static th_status check_spec(const th_flow_spec *spec, th_error *err)
     if (spec->features < 0 || (spec->features > 0 && spec->feature == NULL))
         return th_fail(err, TH_EINVAL, "flow: %d features, want >= 0 and their array",
                        spec->features);
+    if (!(spec->scattering >= 0) || !isfinite(spec->scattering))
+        return th_fail(err, TH_EINVAL, "flow: scattering length %g, want >= 0 and finite",
+                       spec->scattering);
     for (int i = 0; i < spec->features; i++)
         if (!isfinite(spec->feature[i].x) || !isfinite(spec->feature[i].width) ||
             !(spec->feature[i].width > 0))
@@ -177,12 +180,15 @@ static th_status check_ring(const th_flow *flow, const th_flow_sample *sample, i
     return TH_OK;
 }
 
-/* v^2/2 + c^2 - (sqrt n)''/(2 sqrt n), with (sqrt n)''/(2 sqrt n) = n''/(4 n) - (n'/n)^2/8. */
-static double bernoulli(const th_flow_point *p)
+/* v^2/2 + h - (sqrt n)''/(2 sqrt n), with (sqrt n)''/(2 sqrt n) = n''/(4 n) - (n'/n)^2/8 and the
+ * local chemical potential h counted from n = 0. Transverse: h = omega_perp (r - 1) and
+ * c^2 = n dh/dn = omega_perp (r^2 - 1)/(2 r), r = sqrt(1 + 4 a n), so h = c^2 2 r/(1 + r). */
+static double bernoulli(const th_flow *flow, const th_flow_point *p)
 {
-    double slope = p->dn / p->n;
+    double slope = p->dn / p->n, r = sqrt(1 + 4 * flow->scattering * p->n);
 
-    return p->v * p->v / 2 + p->c * p->c - (p->ddn / (4 * p->n) - slope * slope / 8);
+    return p->v * p->v / 2 + p->c * p->c * (2 * r / (1 + r)) -
+           (p->ddn / (4 * p->n) - slope * slope / 8);
 }
 
 static double sound(const th_flow_point *p)
@@ -226,6 +232,7 @@ th_status th_flow_create(const th_flow_spec *spec, const th_ends *ends, th_flow 
     flow->ends = *ends;
     flow->eval = spec->eval;
     flow->ctx = spec->ctx;
+    flow->scattering = spec->scattering;
     st = copy_pieces(flow, spec, err);
     if (st != TH_OK)
         goto done;
@@ -246,7 +253,7 @@ th_status th_flow_create(const th_flow_spec *spec, const th_ends *ends, th_flow 
         if (st != TH_OK)
             goto done;
     }
-    flow->mu = bernoulli(&sample[0].point);
+    flow->mu = bernoulli(flow, &sample[0].point);
     flow->sound_max = largest_sound(flow, sample, count);
     st = th_flow_find_horizons(flow, sample, count, err);
     if (st != TH_OK)
@@ -319,6 +326,11 @@ const th_pocket *th_flow_pockets(const th_flow *flow, int *count)
     return flow->pocket;
 }
 
+double th_flow_scattering(const th_flow *flow)
+{
+    return flow->scattering;
+}
+
 double th_flow_sound_max(const th_flow *flow)
 {
     return flow->sound_max;
@@ -366,7 +378,7 @@ void th_flow_at(const th_flow *flow, double x, th_flow_point *point)
 
 double th_flow_potential(const th_flow *flow, const th_flow_point *point)
 {
-    return flow->mu - bernoulli(point);
+    return flow->mu - bernoulli(flow, point);
 }
 
 double th_flow_horizon_distance(const th_flow *flow)

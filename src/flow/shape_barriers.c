@@ -59,9 +59,10 @@ static void eval(const void *ctx, int piece, double x, th_flow_point *point)
     point->dc = point->c * point->dn / (2 * point->n);
 }
 
-static th_status build(const double *value, const bool *given, double density, const th_ends *ends,
-                       th_flow **out, th_error *err)
+static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
 {
+    const double *value = setup->value;
+    const th_ends *ends = &setup->ends;
     static const bool uniform[3] = {false, true, false};
     double m = value[MACH], c_u = value[SOUND_UPSTREAM], rise = (1 - m) * (1 + m);
     double kappa = sqrt(rise) * c_u, half = value[GAP] / 2;
@@ -80,7 +81,6 @@ static th_status build(const double *value, const bool *given, double density, c
     barriers *b = NULL;
     th_status st;
 
-    (void)given;
     if (ends->kind == TH_ENDS_RING)
         return th_fail_key(err, TH_EINVAL, "kind",
                            "shape barriers cannot close on a ring: its solitons need open ends or "
@@ -88,7 +88,7 @@ static th_status build(const double *value, const bool *given, double density, c
     b = th_alloc(1, sizeof *b);
     if (b == NULL)
         return th_fail(err, TH_ENOMEM, "shape barriers: its parameters");
-    *b = (barriers){.density = density,
+    *b = (barriers){.density = setup->density,
                     .c_u = c_u,
                     .m = m,
                     .half = half,

@@ -49,9 +49,10 @@ static th_status check(const double *value, const th_ends *ends, double relative
     return TH_OK;
 }
 
-static th_status build(const double *value, const bool *given, double density, const th_ends *ends,
-                       th_flow **out, th_error *err)
+static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
 {
+    const double *value = setup->value;
+    const th_ends *ends = &setup->ends;
     static const bool three[3] = {true, false, true}, one[1] = {false};
     double c_u = value[SOUND_UPSTREAM], relative = 4 * value[DEPTH] / (c_u * c_u);
     double reach = th_tail_reach(relative, value[WIDTH], c_u), seam = ends->circumference / 2;
@@ -62,14 +63,13 @@ static th_status build(const double *value, const bool *given, double density, c
     sech *s = NULL;
     th_status st;
 
-    (void)given;
     st = check(value, ends, relative, err);
     if (st != TH_OK)
         return st;
     s = th_alloc(1, sizeof *s);
     if (s == NULL)
         return th_fail(err, TH_ENOMEM, "shape sech: its parameters");
-    *s = (sech){.n = density,
+    *s = (sech){.n = setup->density,
                 .v = value[SPEED],
                 .c_u = c_u,
                 .depth = value[DEPTH],

@@ -27,9 +27,10 @@ static void eval(const void *ctx, int piece, double x, th_flow_point *point)
     *point = (th_flow_point){.n = s->n, .v = s->v, .c = s->c[piece + s->first]};
 }
 
-static th_status build(const double *value, const bool *given, double density, const th_ends *ends,
-                       th_flow **out, th_error *err)
+static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
 {
+    const double *value = setup->value;
+    const th_ends *ends = &setup->ends;
     static const bool uniform[3] = {true, true, true};
     bool ring = ends->kind == TH_ENDS_RING;
     double half = value[GAP] / 2, seam = ends->circumference / 2;
@@ -38,14 +39,13 @@ static th_status build(const double *value, const bool *given, double density, c
     step *s = NULL;
     th_status st;
 
-    (void)given;
     st = th_shape_fits_ring(ends, value[SOUND_UPSTREAM], value[SOUND_DOWNSTREAM], value[GAP], err);
     if (st != TH_OK)
         return st;
     s = th_alloc(1, sizeof *s);
     if (s == NULL)
         return th_fail(err, TH_ENOMEM, "shape step: its parameters");
-    s->n = density;
+    s->n = setup->density;
     s->v = value[SPEED];
     s->c[0] = value[SOUND_UPSTREAM];
     s->c[1] = value[SOUND_POCKET];

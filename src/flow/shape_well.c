@@ -49,9 +49,10 @@ static void eval(const void *ctx, int piece, double x, th_flow_point *point)
     point->dc = point->c * point->dn / (2 * point->n);
 }
 
-static th_status build(const double *value, const bool *given, double density, const th_ends *ends,
-                       th_flow **out, th_error *err)
+static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
 {
+    const double *value = setup->value;
+    const th_ends *ends = &setup->ends;
     static const bool uniform[3] = {false, true, false};
     double m = value[MACH], c_u = value[SOUND_UPSTREAM], rise = (1 - m) * (1 + m);
     double kappa = sqrt(rise) * c_u, half = value[GAP] / 2, reach;
@@ -68,7 +69,6 @@ static th_status build(const double *value, const bool *given, double density, c
     well *w = NULL;
     th_status st;
 
-    (void)given;
     if (ends->kind == TH_ENDS_RING)
         return th_fail_key(err, TH_EINVAL, "kind",
                            "shape well cannot close on a ring: its solitons need open ends or "
@@ -76,7 +76,8 @@ static th_status build(const double *value, const bool *given, double density, c
     w = th_alloc(1, sizeof *w);
     if (w == NULL)
         return th_fail(err, TH_ENOMEM, "shape well: its parameters");
-    *w = (well){.density = density, .c_u = c_u, .m = m, .half = half, .rise = rise, .kappa = kappa};
+    *w = (well){
+        .density = setup->density, .c_u = c_u, .m = m, .half = half, .rise = rise, .kappa = kappa};
     reach = th_tail_reach(4 * rise, 1 / kappa, c_u);
     edge[0] = -half - reach;
     edge[1] = -half;

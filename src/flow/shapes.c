@@ -18,8 +18,8 @@
 /* A speed that the winding of a ring fixes may be given to this relative precision. */
 #define RING_SPEED_TOLERANCE 1e-9
 
-static const th_shape *const table[] = {&th_shape_step, &th_shape_tanh, &th_shape_sech,
-                                        &th_shape_well, &th_shape_barriers};
+static const th_shape *const table[] = {&th_shape_step, &th_shape_tanh,     &th_shape_sech,
+                                        &th_shape_well, &th_shape_barriers, &th_shape_continuity};
 
 int th_shape_count(void)
 {
@@ -64,29 +64,68 @@ th_status th_shape_fits_ring(const th_ends *ends, double sound_upstream, double 
     return TH_OK;
 }
 
+/* A number that the user gave or the ring fixes, against the bounds of its key. */
+static th_status check_bounds(const th_shape_key *key, double value, th_error *err)
+{
+    const char *than = key->zero ? ">=" : ">";
+
+    if (isfinite(value) && (value > key->above || (key->zero && value == key->above)) &&
+        value < key->below)
+        return TH_OK;
+    if (key->below < HUGE_VAL)
+        return th_fail_key(err, TH_EINVAL, key->key, "%s = %.15g, want %s %g and < %g", key->key,
+                           value, than, key->above, key->below);
+    return th_fail_key(err, TH_EINVAL, key->key, "%s = %.15g, want a finite number %s %g", key->key,
+                       value, than, key->above);
+}
+
+/* A key that holds a word or names a table. */
+static th_status check_other(const th_flow_setup *setup, int i, double *value, th_error *err)
+{
+    const th_shape_key *key = &setup->shape->key[i];
+    bool there = key->file ? setup->data != NULL : setup->given[i];
+    int words = 0;
+
+    while (key->word != NULL && key->word[words] != NULL)
+        words++;
+    if (there && key->word != NULL) {
+        *value = setup->value[i];
+        if (!(*value >= 0 && *value < words && *value == floor(*value)))
+            return th_fail_key(err, TH_EINVAL, key->key, "%s: word %g of %d", key->key, *value,
+                               words);
+    } else if (there || key->optional) {
+        *value = key->fallback;
+    } else {
+        return th_fail_key(err, TH_EINVAL, key->key, "%s is missing, shape %s needs it", key->key,
+                           setup->shape->name);
+    }
+    return TH_OK;
+}
+
 /* The value of one key, by the rules of th_shape_key. */
 static th_status read_value(const th_flow_setup *setup, int i, double *value, th_error *err)
 {
     const th_shape_key *key = &setup->shape->key[i];
-    bool fixed = key->fixed_by_ring && setup->ends.kind == TH_ENDS_RING;
+    bool ring = key->fixed_by_ring && setup->ends.kind == TH_ENDS_RING;
+    bool fixed = ring && !setup->shape->closes_itself;
     double around = fixed ? 2 * M_PI * setup->ends.winding / setup->ends.circumference : 0;
+    th_status st;
 
+    if (!th_shape_key_number(key))
+        return check_other(setup, i, value, err);
     if (setup->given[i])
         *value = setup->value[i];
     else if (fixed)
         *value = around;
-    else if (key->optional || key->si_only)
-        *value = key->fallback;
-    else
+    else if (ring || key->optional || key->si_only) {
+        *value = ring ? 0 : key->fallback; /* on such a ring the shape finds it */
+        return TH_OK;
+    } else
         return th_fail_key(err, TH_EINVAL, key->key, "%s is missing, shape %s needs it", key->key,
                            setup->shape->name);
-    if (!isfinite(*value) || !(*value > key->above) || !(*value < key->below)) {
-        if (key->below < HUGE_VAL)
-            return th_fail_key(err, TH_EINVAL, key->key, "%s = %.15g, want > %g and < %g", key->key,
-                               *value, key->above, key->below);
-        return th_fail_key(err, TH_EINVAL, key->key, "%s = %.15g, want a finite number > %g",
-                           key->key, *value, key->above);
-    }
+    st = check_bounds(key, *value, err);
+    if (st != TH_OK)
+        return st;
     if (fixed && !(fabs(*value - around) <= RING_SPEED_TOLERANCE * around))
         return th_fail_key(err, TH_EINVAL, key->key,
                            "%s = %.12g, but winding %d on circumference %.12g makes it %.12g",
@@ -99,7 +138,7 @@ static th_status read_value(const th_flow_setup *setup, int i, double *value, th
 
 th_status th_flow_build(const th_flow_setup *setup, th_flow **out, th_error *err)
 {
-    double value[TH_SHAPE_KEYS_MAX] = {0};
+    th_flow_setup full;
     th_status st;
 
     if (out != NULL)
@@ -113,10 +152,11 @@ th_status th_flow_build(const th_flow_setup *setup, th_flow **out, th_error *err
     st = th_ends_check(&setup->ends, err);
     if (st != TH_OK)
         return st;
+    full = *setup;
     for (int i = 0; i < setup->shape->keys; i++) {
-        st = read_value(setup, i, &value[i], err);
+        st = read_value(setup, i, &full.value[i], err);
         if (st != TH_OK)
             return st;
     }
-    return setup->shape->build(value, setup->given, setup->density, &setup->ends, out, err);
+    return setup->shape->build(&full, out, err);
 }

@@ -25,6 +25,7 @@ struct th_matching {
     th_ends_kind ends;
     th_end left, right;           /* open ends */
     double left_tail, right_tail; /* scaled distance of each end to the nearest horizon */
+    int zeros;                    /* at omega = 0 for every flow of these ends, divided out */
 };
 
 /* Where the solutions meet: the middle of the longest pocket, or of the flow. */
@@ -100,10 +101,12 @@ th_status th_matching_create(const th_flow *flow, double omega_top, th_matching_
         th_matching_destroy(m);
         return st;
     }
+    m->zeros = m->ends == TH_ENDS_RING ? 2 : 0;
     if (m->ends == TH_ENDS_OPEN) {
         m->left = end_of(flow, &m->steps, -1);
         m->right = end_of(flow, &m->steps, +1);
         measure_tails(flow, m);
+        m->zeros = m->left.speed > m->left.sound && m->right.speed > m->right.sound ? 0 : 1;
     }
     *out = m;
     return TH_OK;
@@ -265,7 +268,6 @@ th_status th_matching_eval(const th_matching *matching, double omega_re, double 
 {
     const double rate = matching->steps.speed0 * matching->steps.speed0;
     const double complex omega = (omega_re + I * omega_im) / rate;
-    const int zeros = matching->ends == TH_ENDS_OPEN ? 1 : matching->ends == TH_ENDS_RING ? 2 : 0;
     th_scaled e;
     th_status st;
 
@@ -278,7 +280,7 @@ th_status th_matching_eval(const th_matching *matching, double omega_re, double 
         st = match(matching, omega, slope, &e, err);
     if (st != TH_OK)
         return st;
-    for (int i = 0; i < zeros; i++)
+    for (int i = 0; i < matching->zeros; i++)
         th_scaled_times(&e, 1.0 / omega, -1.0 / (omega * omega));
     out->re = creal(e.value);
     out->im = cimag(e.value);

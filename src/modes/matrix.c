@@ -43,11 +43,8 @@ static bool candidate(const th_solver *w, double complex omega)
         return false;
     if (cimag(omega) > w->census.im_max)
         return false;
-    if (th_solver_conserving(w)) {
-        if (creal(omega) > top)
-            return cimag(omega) > 1e-7 * top;
+    if (th_solver_conserving(w)) /* beyond the top too: the index counts negative energy there */
         return cimag(omega) > -1e-6 * top;
-    }
     if (cimag(omega) > 0.0)
         return true;
     return creal(omega) <= top && carg(omega) > damped_margin - th_level_angle(TH_LEVEL_CHECK);
@@ -88,6 +85,13 @@ static th_status describe(const th_solver *w, const th_eigenpair *pair, th_mode 
     return TH_OK;
 }
 
+/* Not to be listed: neutral, of positive energy, above the band. */
+static bool beyond(const th_solver *w, const th_mode *mode)
+{
+    return mode->omega_re > w->s->omega_top && mode->norm > 0 && th_solver_conserving(w) &&
+           fabs(mode->omega_im) <= fmax(mode->omega_error, 1e-7 * w->s->omega_top);
+}
+
 /* Refine one candidate on two levels; a mode goes to the list. Not settling is not a failure. */
 static th_status examine(th_solver *w, double complex omega, th_error *err)
 {
@@ -109,7 +113,7 @@ static th_status examine(th_solver *w, double complex omega, th_error *err)
         /* twice: both levels may err to the same side */
         mode.omega_error = 2.0 * apart + coarse.rounding + fine.rounding;
         st = describe(w, &fine, &mode, err);
-        if (st == TH_OK)
+        if (st == TH_OK && !beyond(w, &mode))
             st = keep(w, &mode, err);
     }
     th_eigenpair_clear(&coarse);

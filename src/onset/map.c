@@ -91,10 +91,8 @@ static th_status work(void *ctx, long item, th_error *err)
         th_error why = {0};
 
         place(m, first_of(m, task) + i, value);
-        for (int a = 0; a < m->axes; a++) {
-            setup.value[m->axis[a]->key] = value[a];
-            setup.given[m->axis[a]->key] = true;
-        }
+        for (int a = 0; a < m->axes; a++)
+            th_axis_set(m->axis[a]->key, value[a], &setup);
         if (setup.ends.kind == TH_ENDS_OPEN)
             st = th_onset_open(&setup, &m->options, m->axes > 0 ? value[m->axes - 1] : 0.0, &trail,
                                &b->point[i].list, &why);

@@ -73,8 +73,7 @@ th_flow_setup th_sweep_setup(const th_case *c, long number)
     th_flow_setup setup = c->setup;
 
     for (int a = c->axes - 1; a >= 0; a--) {
-        setup.value[c->axis[a].key] = c->axis[a].value[number % c->axis[a].count];
-        setup.given[c->axis[a].key] = true;
+        th_axis_set(c->axis[a].key, c->axis[a].value[number % c->axis[a].count], &setup);
         number /= c->axis[a].count;
     }
     return setup;
