@@ -21,7 +21,8 @@ units:    alloc status
 table:    csv units version
 dispersion: units
 data:     units io_error
-flow:     data
+workspace: alloc status
+flow:     data workspace
 case:     flow buffer
 mesh:     flow dispersion
 lapack:   alloc status

@@ -31,7 +31,8 @@ mpi() {
     mpirun --allow-run-as-root --oversubscribe -n 3 "$parallel" "$@"
 }
 same() {
-    cmp serial/points.csv "$1/points.csv" && cmp serial/modes.csv "$1/modes.csv"
+    cmp serial/points.csv "$1/points.csv" && cmp serial/modes.csv "$1/modes.csv" &&
+        cmp serial/events.csv "$1/events.csv"
 }
 refused() { # a failure of rank 0 ends all ranks, with its sentence once
     ! timeout 60 mpirun --allow-run-as-root --oversubscribe -n 3 "$parallel" "$@" 2>err

@@ -2,7 +2,8 @@
 # twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
 # SPDX-License-Identifier: GPL-3.0-or-later
 #
-# Sweeps as a user runs them: threads, interruptions, parts, the staircase. TAP; $1 is the program.
+# Sweeps as a user runs them: threads, interruptions, parts, the staircase, events. TAP; $1 is the
+# program.
 # The reference is the undisturbed run on one thread, and for the staircase the closed form of the
 # switch-on lengths of a step pocket, L_j = [atan(k_u/k_0) + atan(k_d/k_0) + j pi]/k_0 with
 # k_0 = 2 sqrt(v^2 - c_p^2), k_u,d = 2 sqrt(c_u,d^2 - v^2): static linearised equation at fixed
@@ -46,9 +47,10 @@ def run(*arguments, **options):
 
 def tables(folder):
     out = []
-    for name in ("points.csv", "modes.csv", "points.csv-metadata.json", "modes.csv-metadata.json"):
-        with open(os.path.join(folder, name), "rb") as file:
-            out.append(file.read())
+    for name in ("points.csv", "modes.csv", "events.csv"):
+        for ending in ("", "-metadata.json"):
+            with open(os.path.join(folder, name + ending), "rb") as file:
+                out.append(file.read())
     return out
 
 
@@ -61,16 +63,25 @@ def write(name, text):
         file.write(text)
 
 
-def staircase(folder):
-    """The count at every gap is the number of switch-on lengths below it."""
+def rows_of(folder, name):
+    with open(os.path.join(folder, name), newline="") as file:
+        return list(csv.DictReader(file))
+
+
+def switch_on(order):
+    """The closed form of the switch-on lengths of STEP."""
     v, c_u, c_p, c_d = 1.0, 1.5, 0.5, 1.5
     k0 = 2 * math.sqrt(v * v - c_p * c_p)
     phase = sum(math.atan(2 * math.sqrt(c * c - v * v) / k0) for c in (c_u, c_d))
-    rows = list(csv.DictReader(open(os.path.join(folder, "points.csv"), newline="")))
+    return (phase + order * math.pi) / k0
+
+
+def staircase(folder):
+    """The count at every gap is the number of switch-on lengths below it."""
+    rows = rows_of(folder, "points.csv")
     wrong = 0
     for row in rows:
-        gap = float(row["gap"])
-        expected = max(0, math.ceil((gap * k0 - phase) / math.pi))
+        expected = sum(switch_on(j) < float(row["gap"]) for j in range(50))
         wrong += not (int(row["unstable"]) == int(row["census"]) == int(row["index"]) == expected)
         wrong += row["status"] != "ok"
     return len(rows) == 1000 and wrong == 0
@@ -79,7 +90,7 @@ def staircase(folder):
 def branches(folder):
     """Along the sweep a branch moves smoothly: no step is ten times its neighbours'."""
     line = {}
-    for row in csv.DictReader(open(os.path.join(folder, "modes.csv"), newline="")):
+    for row in rows_of(folder, "modes.csv"):
         at = complex(float(row["omega_re"]), float(row["omega_im"]))
         line.setdefault(row["branch"], []).append((float(row["gap"]), at))
     jumps = 0
@@ -89,6 +100,77 @@ def branches(folder):
         jumps += any(g > 0.02 for g in gaps)  # a branch has no holes (grid step 0.0195)
         jumps += any(s > 0.1 for s in steps)
     return len(line) > 5 and jumps == 0
+
+
+def sums(folder, axes=()):
+    """Between neighbours that are ok the changes add up to that of `unstable`; elsewhere there is
+    no event. False when there is nothing to see."""
+    points, events = rows_of(folder, "points.csv"), rows_of(folder, "events.csv")
+    left = len(events)
+    good = left > 0
+    for a, b in zip(points, points[1:]):
+        here = [e for e in events if (e["from"], e["to"]) == (a["gap"], b["gap"])
+                and all(e[x] == a[x] == b[x] for x in axes)]
+        left -= len(here)
+        if a["status"] != "ok" or b["status"] != "ok":
+            good &= not here
+        elif all(a[x] == b[x] for x in axes):
+            good &= (sum(int(e["count_change"]) for e in here)
+                     == int(b["unstable"]) - int(a["unstable"]))
+    return good and left == 0
+
+
+def foretold(folder, lengths, axes=()):
+    """Events are births at even switch-on lengths, where a purely growing mode comes, and mergers at
+    odd ones, where the slowest mode turns into a pair. lengths: (values of the axes, gap, even);
+    branch: that of a mode beyond the event, of a merger an oscillating one."""
+    first = min(float(p["gap"]) for p in rows_of(folder, "points.csv"))
+    events, modes = rows_of(folder, "events.csv"), rows_of(folder, "modes.csv")
+    lengths = [x for x in lengths if x[1] > first]
+    good = len(lengths) == len(events) > 1
+    for values, gap, even in lengths:
+        there = [e for e in events if float(e["from"]) < gap <= float(e["to"])
+                 and tuple(float(e[a]) for a in axes) == values
+                 and (e["event"], e["count_change"]) == ("birth" if even else "merger", "1")]
+        kinds = [float(m["omega_re"]) > 0 for e in there for m in modes
+                 if m["gap"] == e["to"] and m["branch"] == e["branch"]
+                 and all(m[a] == e[a] for a in axes)]
+        good &= len(there) == 1 and kinds == [not even]
+    return good
+
+
+def onset_lengths(case, axes=()):
+    out = run("onset", case, "--csv", "-").stdout
+    return [(tuple(float(r[a]) for a in axes), float(r["gap"]), r["kind"] == "growing")
+            for r in csv.DictReader(out.splitlines())]
+
+
+def events():
+    """Events of sweeps of three shapes against closed form and `onset`."""
+    closed = [((), switch_on(j), j % 2 == 0) for j in range(50) if switch_on(j) < 20]
+    check(sums("one") and foretold("one", closed), "events of step are at L_j, 1000 gaps")
+    write("coarse.ini", STEP % 40)
+    run("sweep", "coarse.ini", "--out", "coarse")
+    check(sums("coarse") and foretold("coarse", closed)
+          and foretold("coarse", onset_lengths("coarse.ini")), "so they are on 40 gaps")
+    run("sweep", "coarse.ini", "--set", "sweep.gap=20 to 0.5 in 40", "--out", "down")
+    kinds = [[(e["event"], e["count_change"]) for e in rows_of(f, "events.csv")]
+             for f in ("coarse", "down")]
+    back = {("birth", "1"): ("death", "-1"), ("merger", "1"): ("split", "-1")}
+    check(sums("down") and kinds[1] == [back[k] for k in reversed(kinds[0])],
+          "backwards they are deaths and splits")
+    write("tanh2.ini", (STEP % 40).replace("shape = step", "shape = tanh\nwidth_black = 0.5\n"
+                                           "width_white = 0.7")
+          .replace("gap = 0.5 to 20", "sound_pocket = 0.5, 0.6\ngap = 1 to 7"))
+    run("sweep", "tanh2.ini", "--out", "tanh2")
+    axes = ("sound_pocket",)
+    check(sums("tanh2", axes) and foretold("tanh2", onset_lengths("tanh2.ini", axes), axes),
+          "events of tanh are where onset says, two lines")
+    write("well.ini", "[units]\nsystem = reduced\n[flow]\nshape = well\nmach = 0.6\n"
+          "[sweep]\ngap = 0.5 to 3.5 in 30\n")
+    run("sweep", "well.ini", "--out", "well")
+    check(sums("well") and foretold("well", onset_lengths("well.ini")),
+          "events of well are where onset says")
 
 
 def interrupted(case, reference, seed):
@@ -133,6 +215,7 @@ def main():
     reference = tables("one")
     check(staircase("one"), "count = index = census = switch-on lengths below the gap, 1000 gaps")
     check(branches("one"), "branches are continuous lines")
+    events()
     for threads in ("2", "7"):
         run("sweep", "step.ini", "--out", "t" + threads, "--threads", threads)
         check(same("t" + threads, reference), "same bytes on %s threads" % threads)
@@ -162,9 +245,10 @@ def main():
                                          "width_white = 0.5")
           .replace("gap = 0.5 to 20", "sound_pocket = 0.5, 1.2\ngap = 2 to 4"))
     partly = run("sweep", "tanh.ini", "--out", "partly")
-    rows = list(csv.DictReader(open("partly/points.csv", newline="")))
+    rows = rows_of("partly", "points.csv")
     check(partly.returncode == 1 and [r["status"] for r in rows] == ["ok"] * 3 + ["failed"] * 3,
           "points without a flow are recorded as failed, the sweep goes on")
+    check(sums("partly", ("sound_pocket",)), "and have no events")
     # exactly at the first switch-on of a smooth pocket the index cannot tell; solve says so too
     write("switch.ini", (STEP % 3).replace("shape = step", "shape = tanh\nwidth_black = 0.5\n"
                                            "width_white = 0.7").replace("= 1.5", "= 1.35", 1)
@@ -172,10 +256,11 @@ def main():
           .replace("gap = 0.5 to 20 in 3", "gap = 1.2, 1.38057805767058, 1.5"))
     at = run("solve", "switch.ini", "--set", "flow.gap=1.38057805767058")
     switch = run("sweep", "switch.ini", "--out", "switch")
-    rows = list(csv.DictReader(open("switch/points.csv", newline="")))
+    rows = rows_of("switch", "points.csv")
     check(at.returncode == 1 and switch.returncode == 1
           and [r["status"] for r in rows] == ["ok", "undecided", "ok"],
           "a point on a switch-on is undecided, in a sweep as alone")
+    check(not rows_of("switch", "events.csv"), "and has no events")
     nowhere = run("sweep", "step.ini", "--out", "no/such/folder")
     check(nowhere.returncode == 2 and nowhere.stderr.count("\n") == 1, "a missing folder is named")
     print("1..%d" % count)

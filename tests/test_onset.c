@@ -149,6 +149,11 @@ static void test_step(void **state)
     assert_false(list.complete);
     check_row(&list, 1, 1, known[1]);
     th_onset_clear(&list);
+    /* however far it goes, the first ones are not passed over */
+    list = find(&setup, (th_onset_options){.upto = 5e5, .orders = 4, .threads = 1});
+    for (int j = 0; j < 4; j++)
+        check_row(&list, j, j, known[j]);
+    th_onset_clear(&list);
     list = find(&setup, (th_onset_options){.upto = known[3] - 1e-11, .threads = 1});
     assert_int_equal(list.count, 3);
     th_onset_clear(&list);
@@ -621,6 +626,10 @@ static void test_errors(void **state)
     expect(setup, (th_onset_options){.upto = 0, .threads = 1}, TH_EINVAL, "upto");
     expect(setup, (th_onset_options){.upto = NAN, .threads = 1}, TH_EINVAL, "upto");
     expect(setup, (th_onset_options){.upto = HUGE_VAL, .threads = 1}, TH_EINVAL, "upto");
+    expect(setup, (th_onset_options){.upto = 1.1e6, .orders = 1, .threads = 1}, TH_EINVAL,
+           "the search ends at 1e+06");
+    expect(setup, (th_onset_options){.upto = 1e19, .threads = 1}, TH_EINVAL, "healing lengths");
+    expect(setup, (th_onset_options){.upto = 5e5, .threads = 1}, TH_EINVAL, "want at most 100000");
     expect(setup, (th_onset_options){.upto = 1, .orders = -1, .threads = 1}, TH_EINVAL, "orders");
     expect(setup, (th_onset_options){.upto = 1, .samples = 1, .threads = 1}, TH_EINVAL, "samples");
     expect(setup, (th_onset_options){.upto = 1, .threads = 0}, TH_EINVAL, "threads");

@@ -70,7 +70,7 @@ static void run_blocks(const th_case *c, record *r)
 
         th_sweep_block(c, b, &first, &count);
         assert_int_equal(first, r->seen);
-        if (th_sweep_run_block(c, b, NULL, 0, take, r, NULL, &err) != TH_OK)
+        if (th_sweep_run_block(c, b, NULL, 0, NULL, take, r, NULL, &err) != TH_OK)
             fail_msg("%s", err.text);
         assert_int_equal(r->seen, first + count);
     }
@@ -198,7 +198,7 @@ static void test_contract(void **state)
     c = case_of("[sweep]\ngap = 1 to 7 in 4\n");
     record_clear(&r);
     r.stop_at = 2;
-    assert_int_equal(th_sweep_run_block(c, 0, NULL, 0, take, &r, NULL, &err), TH_EIO);
+    assert_int_equal(th_sweep_run_block(c, 0, NULL, 0, NULL, take, &r, NULL, &err), TH_EIO);
     assert_string_equal(err.text, "the sink is full");
     assert_int_equal(r.seen, 2);
     record_clear(&r);

@@ -65,7 +65,7 @@ TH_MUST_USE th_status th_census_count(const th_flow *flow, const th_matching *ma
  * millionth of a switch-on, growing + slow equals the static index, not growing alone.
  *
  * @param[out] omega  [*count][2] (Re, Im) of the growing modes with Re omega >= 0, by falling Im;
- *                    the caller frees it; NULL after a failure
+ *the caller frees it (plain memory); NULL after a failure
  * @retval TH_EUNDECIDED  as th_census_count, or a mode that was counted could not be pinned down
  * @retval TH_EINVAL      not open ends
  */

@@ -17,6 +17,7 @@
 #include <twinhorizon/data.h>
 #include <twinhorizon/status.h>
 #include <twinhorizon/units.h>
+#include <twinhorizon/workspace.h>
 
 #ifdef __cplusplus
 extern "C" {
@@ -216,6 +217,8 @@ struct th_flow_setup {
     double density;      /* upstream line density, reduced; 1 when not given */
     const th_data *data; /* borrowed, reduced units; of a shape with a key that names a file */
     th_ends ends;
+    th_workspace *workspace; /* memory of the flow and of what is made of it: one thread at a time
+                                then makes and destroys them, all before it; NULL: plain */
 };
 
 /**

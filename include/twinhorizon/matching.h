@@ -33,7 +33,7 @@ typedef enum { TH_MATCHING_USUAL, TH_MATCHING_FINE } th_matching_grain;
  * Prepare the matching function of a flow: cut its pieces into steps and expand n, 1/n and n c^2
  * on each. Everything that does not depend on omega is done here.
  *
- * @param[in]  flow       borrowed during the call only
+ * @param[in]  flow       borrowed during the call only, its workspace for as long as the result
  * @param[in]  omega_top  |omega| up to which steps are chosen; larger ones are allowed, less exact
  * @param[in]  grain      step length
  * @retval TH_EINVAL      flow or out is NULL, omega_top is not > 0

@@ -68,7 +68,8 @@ double th_onset_upto(const th_case *c);
  * Open ends: the static operator K has a zero eigenvalue there. The mismatch angle of its two
  * decaying solutions (see index.h) reaches order x pi, is bracketed there and refined by secants;
  * even orders add a purely growing mode, odd ones make a pair of the slowest. Searched from
- * 1e-9 upto on.
+ * 1e-9 of the shortest healing length on (of upto if that is less), up to 1e6 healing lengths and
+ * 100000 changes.
  * Rings and walls: two neutral modes of opposite energy collide on the real axis, or a mode and its
  * mirror image at omega = 0. Neighbouring samples whose certified modes differ in their counts or
  * in the order of their energies are bisected until a circle isolates the two modes; the square of
@@ -81,7 +82,7 @@ double th_onset_upto(const th_case *c);
  * @param[out] out      zero before the call; th_onset_clear releases, after failures too
  *
  * @retval TH_OK          all changes in (from, to] unless !out->complete
- * @retval TH_EINVAL      no length key, an option or a flow breaks a rule
+ * @retval TH_EINVAL      no length key, an option or a flow breaks a rule, upto is out of reach
  * @retval TH_ENONE       open ends: one is not subsonic
  * @retval TH_EUNDECIDED  the text says between which lengths
  * @retval TH_ENOMEM, TH_ECONVERGE

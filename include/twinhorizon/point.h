@@ -11,6 +11,7 @@
 #include <twinhorizon/flow.h>
 #include <twinhorizon/modes.h>
 #include <twinhorizon/status.h>
+#include <twinhorizon/workspace.h>
 
 #ifdef __cplusplus
 extern "C" {
@@ -28,33 +29,34 @@ typedef struct {
     unsigned confirmed; /* TH_BY_... */
 } th_point_mode;
 
-/* One finished point. Start from {0}; th_point_clear releases. */
+/* One finished point. Start from {0} or {.workspace = ...}; th_point_clear releases. */
 typedef struct {
     long number; /* 0 .. points - 1 in the grid, last axis fastest */
     th_point_state state;
     double horizon_distance; /* 0 without a pair of horizons or after a failure */
     bool index_known, census_known;
     int index, census;
-    int unstable;        /* growing modes, both signs of Re omega */
-    int count, room;     /* modes listed: growing ones with open ends, all in the band else */
-    th_point_mode *mode; /* [count] by falling Im omega, then rising Re omega */
-    char message[256];   /* why undecided or failed; "" otherwise; no control characters */
+    int unstable;            /* growing modes, both signs of Re omega */
+    th_workspace *workspace; /* of `mode`; NULL: plain memory */
+    int count, room;         /* modes listed: growing ones with open ends, all in the band else */
+    th_point_mode *mode;     /* [count] by falling Im omega, then rising Re omega */
+    char message[256];       /* why undecided or failed; "" otherwise; no control characters */
 } th_point;
 
 /** Make room for so many modes, >= 0 (count is set to it): those that were there stay, new ones are
  * zero. TH_EINVAL; TH_ENOMEM, and then the point is as it was. */
 TH_MUST_USE th_status th_point_resize(th_point *point, int count, th_error *err);
 
-/** Copy a point; TH_ENOMEM. */
+/** Copy a point into one with a workspace of its own, or none; TH_ENOMEM. */
 TH_MUST_USE th_status th_point_copy(const th_point *from, th_point *to, th_error *err);
 
-/** Release the modes and zero the point. */
+/** Release the modes and zero the point, its workspace too. */
 void th_point_clear(th_point *point);
 
 /**
  * Answer one point.
  *
- * @param[in]  setup     configuration of this point
+ * @param[in]  setup     configuration of this point, with the workspace to use
  * @param[in]  accuracy  as th_solve_options
  * @param[in]  previous  [2] the last point and the one before on the same line of the sweep, or
  *                       NULL where there is none; equally spaced

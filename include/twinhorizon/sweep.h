@@ -3,7 +3,8 @@
  *
  * Sweeps: every point of the axes of a case, on several threads, into a journal; and the branches
  * that modes of neighbouring points form. What goes in: a case with a [sweep] section. What comes
- * out: finished points in the journal, in any order. Depends on case, journal, point, status. */
+ * out: finished points in the journal, in any order; branches and events along the last axis.
+ * Depends on case, journal, point, status. */
 #ifndef TWINHORIZON_SWEEP_H
 #define TWINHORIZON_SWEEP_H
 
@@ -12,6 +13,7 @@
 #include <twinhorizon/journal.h>
 #include <twinhorizon/point.h>
 #include <twinhorizon/status.h>
+#include <twinhorizon/workspace.h>
 
 #ifdef __cplusplus
 extern "C" {
@@ -51,7 +53,9 @@ th_flow_setup th_sweep_setup(const th_case *c, long number);
 /**
  * Run what the journal lacks of a sweep, or of a part of it.
  *
- * A point that cannot be built or solved is recorded as failed and the sweep goes on.
+ * A point that cannot be built or solved is recorded as failed and the sweep goes on. Each thread
+ * has a workspace: once it has seen the largest points, one that is followed and settled allocates
+ * nothing.
  * @retval TH_OK      done, or stopped: th_journal_count tells
  * @retval TH_EINVAL  an option breaks its rule, or as th_sweep_size
  * @retval TH_EIO     the journal cannot be written
@@ -61,24 +65,26 @@ TH_MUST_USE th_status th_sweep_run(const th_case *c, const th_sweep_options *opt
                                    th_journal *journal, th_error *err);
 
 /** Run one block without a journal: known[0..knowns-1] are its first points, finished before;
- * the others are computed and handed to sink in order. For those who deal out blocks themselves.
+ * the others are computed and handed to sink in order. For those who deal out blocks themselves: a
+ * workspace (NULL: plain memory) may go from block to block, and serves one at a time.
  * Anything but TH_OK from sink ends the block with that status. Errors as th_sweep_run. */
 TH_MUST_USE th_status th_sweep_run_block(const th_case *c, long block, const th_point *known,
-                                         int knowns,
+                                         int knowns, th_workspace *workspace,
                                          th_status (*sink)(void *ctx, const th_point *point,
                                                            th_error *err),
                                          void *ctx, const atomic_int *stop, th_error *err);
 
 /* ---- branches ------------------------------------------------------------------------------- */
 
-/* Identity of modes along the last axis. Start from {0}; th_branches_clear begins a new line and
- * releases memory. */
+/* Identity of modes along the last axis. Start from {0} or {.workspace = ...}; th_branches_clear
+ * begins a new line and releases memory, not the workspace. */
 typedef struct {
-    int count;         /* modes at the previous point */
-    int *branch;       /* [count] */
-    double *re, *im;   /* [count] where they were */
-    double *dre, *dim; /* [count] their last steps, 0 for a new mode */
-    int last;          /* highest number given so far in this line */
+    th_workspace *workspace; /* of the arrays; NULL: plain memory */
+    int count;               /* modes at the previous point */
+    int *branch;             /* [count] */
+    double *re, *im;         /* [count] where they were */
+    double *dre, *dim;       /* [count] their last steps, 0 for a new mode */
+    int last;                /* highest number given so far in this line */
 } th_branches;
 
 /**
@@ -93,6 +99,40 @@ TH_MUST_USE th_status th_branches_next(th_branches *line, const th_point *point,
                                        int *branch, th_error *err);
 
 void th_branches_clear(th_branches *line);
+
+/* ---- events --------------------------------------------------------------------------------- */
+
+/* birth, death: a growing mode comes or goes. merger: a purely growing mode becomes an oscillating
+ * pair; split: the reverse. */
+typedef enum { TH_EVENT_BIRTH, TH_EVENT_MERGER, TH_EVENT_SPLIT, TH_EVENT_DEATH } th_event_kind;
+
+/** The kind as written in tables: "birth", "merger", "split", "death". */
+const char *th_event_kind_text(th_event_kind kind);
+
+typedef struct {
+    th_event_kind kind;
+    int branch; /* of the mode; of a merger and a split the oscillating one */
+    int change; /* of the number of growing modes, both signs of Re omega counted. Birth 1, death
+                   -1; 2 and -2 for a pair. Merger 0 where two purely growing modes meet, 1 where
+                   one meets at zero a mode that did not grow; split 0 and -1 */
+} th_event;
+
+/**
+ * What becomes of the growing modes between two neighbouring points: the fewest events that turn
+ * the numbers of purely growing modes and of oscillating pairs at one point into those at the next.
+ * With open ends growing modes come and go at zero frequency only, one by one, so a new pair is a
+ * birth and a merger; else a pair can be born of two neutral modes.
+ *
+ * @param[in]  before, now      points, both TH_POINT_OK
+ * @param[in]  branch_before, branch_now  the branches of their modes
+ * @param[in]  open             open ends
+ * @param[out] event            [2 (before->count + now->count)] at most
+ * @return how many: births, mergers, splits, deaths; their changes add up to that of `unstable`
+ * What it does not tell: a death and a birth between the same points. Which branch is meant rests
+ * on their numbers, and where several events fall between two points on guesses.
+ */
+int th_events_find(const th_point *before, const int *branch_before, const th_point *now,
+                   const int *branch_now, bool open, th_event *event);
 
 #ifdef __cplusplus
 }

@@ -12,7 +12,8 @@
 #include "census/region.h"
 
 #include <gsl/gsl_math.h>
-#include <string.h>
+
+#include "flow/workspace.h"
 
 /* The region's width over the top of the negative-energy band: a growing mode needs a wave of
  * negative energy at its frequency, and there is none beyond the top. The rest is the probe. */
@@ -106,7 +107,7 @@ static th_status bottom(th_region *r, const th_matching *matching, th_error *err
 /* Modes with |omega| < slowest: the right half of the circle, clockwise from the top. */
 static th_status count_slow(th_region *r, const th_matching *matching, th_error *err)
 {
-    th_path circle = {0};
+    th_path circle = {.workspace = r->workspace};
     th_status st = th_path_start(&circle, matching, true, I * r->census.slowest, err);
 
     for (int q = 1; st == TH_OK && q <= 8; q++)
@@ -122,7 +123,7 @@ static th_status count_slow(th_region *r, const th_matching *matching, th_error 
 /* Modes on the real axis, 0 < Re omega < re_max: phase up the side of the strip less the bottom. */
 static th_status count_neutral(th_region *r, const th_matching *matching, th_error *err)
 {
-    th_path side = {0};
+    th_path side = {.workspace = r->workspace};
     int strip = 0;
     th_status st = th_path_start(&side, matching, true, r->census.re_max, err);
 
@@ -157,10 +158,11 @@ th_status th_region_count(const th_flow *flow, const th_matching *matching, doub
 {
     const bool open = th_flow_ends(flow).kind == TH_ENDS_OPEN;
     const double sound = th_flow_sound_max(flow);
+    th_workspace *memory = th_flow_workspace(flow);
     double top;
     th_status st;
 
-    memset(r, 0, sizeof *r);
+    *r = (th_region){.workspace = memory, .bottom.workspace = memory, .lid.workspace = memory};
     if (!(omega_top > 0.0))
         return th_fail(err, TH_EINVAL, "census: omega_top = %g, want > 0", omega_top);
     top = fmax(omega_top, narrowest_band * sound * sound);

@@ -72,7 +72,7 @@ static th_status add(search *s, double complex root, double last, th_error *err)
             return TH_OK;
     if (s->count == s->room) {
         int room = s->room > 0 ? 2 * s->room : 64;
-        mode *grown = realloc(s->found, (size_t)room * sizeof *grown);
+        mode *grown = th_stretch(s->region->workspace, s->found, (size_t)room * sizeof *grown);
 
         if (grown == NULL)
             return th_fail(err, TH_ENOMEM, "census: %d modes", room);
@@ -144,7 +144,7 @@ static th_status count_below(search *s, double x, int *modes, th_error *err)
 {
     const th_path *bottom = &s->region->bottom, *lid = &s->region->lid;
     const double high = s->region->census.im_max;
-    th_path line = {0};
+    th_path line = {.workspace = s->region->workspace};
     const th_node *under = NULL, *over = NULL, *end;
     double turns = 0.0;
     th_status st;
@@ -268,7 +268,7 @@ th_status th_census_find(const th_flow *flow, const th_matching *matching, doubl
         }
         qsort(*omega, (size_t)s.count, sizeof **omega, by_growth);
     }
-    free(s.found);
+    th_give(region.workspace, s.found);
     th_region_clear(&region);
     return st;
 }

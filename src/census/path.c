@@ -6,9 +6,6 @@
 #include "census/path.h"
 
 #include <gsl/gsl_math.h>
-#include <stdlib.h>
-
-#include "alloc.h"
 
 /* A phase step is believed below this size, and when the mean of F'/F at its ends predicts the
  * step of log F this well: a step that hides a full turn fails the second test. */
@@ -41,7 +38,7 @@ static th_status push(th_path *p, const th_node *node, th_error *err)
 {
     if (p->count == p->room) {
         int room = p->room > 0 ? 2 * p->room : 256;
-        th_node *grown = realloc(p->node, (size_t)room * sizeof *grown);
+        th_node *grown = th_stretch(p->workspace, p->node, (size_t)room * sizeof *grown);
 
         if (grown == NULL)
             return th_fail(err, TH_ENOMEM, "census: %d samples", room);
@@ -108,7 +105,7 @@ double th_path_phase(const th_path *path)
 
 void th_path_clear(th_path *path)
 {
-    free(path->node);
+    th_give(path->workspace, path->node);
     path->node = NULL;
     path->count = path->room = 0;
 }

@@ -8,6 +8,7 @@
 
 #include <complex.h>
 #include "twinhorizon/matching.h"
+#include "workspace.h"
 
 typedef struct {
     double complex omega;
@@ -18,6 +19,7 @@ typedef struct {
 } th_node;
 
 typedef struct {
+    th_workspace *workspace; /* set before the start, kept by th_path_clear; may be NULL */
     const th_matching *matching;
     th_node *node; /* [count] */
     int count, room;

@@ -9,6 +9,7 @@
 #include "twinhorizon/census.h"
 
 typedef struct {
+    th_workspace *workspace; /* the flow's */
     th_census census;
     th_path bottom; /* from Re omega = 0 to re_max */
     th_path lid;    /* up the right side and back along the top to Re omega = 0 */

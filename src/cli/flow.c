@@ -113,7 +113,7 @@ static th_status write_table(const th_case *c, const th_flow *flow, const char *
          .title = "external potential that makes the flow stationary",
          .datatype = "number",
          .unit = cli_unit(c, TH_DIM_ENERGY),
-         .description = "zero far upstream; contact interaction; a jump of the flow is two rows "
+         .description = "zero far upstream; a jump of the flow is two rows "
                         "with the same x"},
     };
     enum { columns = sizeof column / sizeof column[0] };

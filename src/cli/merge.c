@@ -94,7 +94,7 @@ static void help(void)
     puts("twinhorizon merge DIR... --out DIR\n\n"
          "Write the tables of a sweep that was run in parts (sweep --part K/N) into a folder.\n\n"
          "  DIR...     the folders of all parts\n"
-         "  --out DIR  folder for points.csv and modes.csv; made when missing");
+         "  --out DIR  folder for points.csv, modes.csv and events.csv; made when missing");
 }
 
 int cli_merge(int argc, char **argv)

@@ -105,6 +105,7 @@ static th_status send_point(const th_point *point, int to, int tag, th_error *er
 /* The message that `status` announces, as a point. */
 static th_status receive_point(MPI_Status *status, th_point *point, th_error *err)
 {
+    th_workspace *workspace = point->workspace;
     th_point_mode *mode = point->mode;
     const int room = point->room;
     th_status st;
@@ -119,6 +120,7 @@ static th_status receive_point(MPI_Status *status, th_point *point, th_error *er
              MPI_STATUS_IGNORE);
     memcpy(point, bytes, sizeof *point);
     count = point->count;
+    point->workspace = workspace;
     point->mode = mode;
     point->room = room;
     point->count = 0;
@@ -136,26 +138,30 @@ static th_status send_to_master(void *ctx, const th_point *point, th_error *err)
 }
 
 /* One block from rank 0: message {block, knowns}, then the known points. */
-static th_status serve_block(const th_case *c, MPI_Status *status, th_error *err)
+static th_status serve_block(const th_case *c, th_workspace *workspace, MPI_Status *status,
+                             th_error *err)
 {
     th_point known[TH_SWEEP_BLOCK];
     long block[2];
     th_status st = TH_OK;
 
-    memset(known, 0, sizeof known);
+    for (int i = 0; i < TH_SWEEP_BLOCK; i++)
+        known[i] = (th_point){.workspace = workspace};
     MPI_Recv(block, 2, MPI_LONG, status->MPI_SOURCE, TAG_BLOCK, MPI_COMM_WORLD, MPI_STATUS_IGNORE);
     for (long i = 0; st == TH_OK && i < block[1]; i++) {
         MPI_Probe(0, TAG_KNOWN, MPI_COMM_WORLD, status);
         st = receive_point(status, &known[i], err);
     }
     if (st == TH_OK)
-        st = th_sweep_run_block(c, block[0], known, (int)block[1], send_to_master, NULL, NULL, err);
+        st = th_sweep_run_block(c, block[0], known, (int)block[1], workspace, send_to_master, NULL,
+                                NULL, err);
     for (int i = 0; i < TH_SWEEP_BLOCK; i++)
         th_point_clear(&known[i]);
     return st;
 }
 
-static th_status serve(const th_case *c, th_error *err)
+/* Blocks until the end; the first failure, which rank 0 is told. */
+static th_status serve_all(const th_case *c, th_workspace *workspace, th_error *err)
 {
     for (;;) {
         MPI_Status status;
@@ -167,7 +173,7 @@ static th_status serve(const th_case *c, th_error *err)
             MPI_Recv(NULL, 0, MPI_BYTE, 0, TAG_END, MPI_COMM_WORLD, MPI_STATUS_IGNORE);
             return TH_OK;
         }
-        st = serve_block(c, &status, &why);
+        st = serve_block(c, workspace, &status, &why);
         if (st == TH_OK) {
             MPI_Send(NULL, 0, MPI_BYTE, 0, TAG_DONE, MPI_COMM_WORLD);
             continue;
@@ -177,6 +183,18 @@ static th_status serve(const th_case *c, th_error *err)
             *err = why;
         return st;
     }
+}
+
+static th_status serve(const th_case *c, th_error *err)
+{
+    th_workspace *workspace = NULL;
+    th_status st;
+
+    if (th_workspace_create(&workspace, NULL) != TH_OK)
+        workspace = NULL; /* without one the points only take longer */
+    st = serve_all(c, workspace, err);
+    th_workspace_destroy(workspace);
+    return st;
 }
 
 typedef struct {

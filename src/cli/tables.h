@@ -19,8 +19,8 @@ typedef struct {
     long points, unstable, undecided, failed;
 } cli_counts;
 
-/* Write FOLDER/points.csv and FOLDER/modes.csv from the finished points, in the order of the grid.
- */
+/* Write points.csv, modes.csv and events.csv of FOLDER from the finished points, in the order of
+ * the grid. */
 th_status cli_write_tables(const th_case *c, long points, const cli_source *source,
                            const char *folder, cli_counts *counts, th_error *err) TH_MUST_USE;
 

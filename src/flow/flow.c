@@ -14,8 +14,6 @@
 #include <gsl/gsl_math.h>
 #include <string.h>
 
-#include "../alloc.h"
-
 /* n v may vary by this much, relatively: callbacks that interpolate measured data reach it easily
  * and the growth rates then still carry nine digits. */
 #define FLUX_TOLERANCE 1e-9
@@ -88,9 +86,9 @@ static th_status copy_pieces(th_flow *flow, const th_flow_spec *spec, th_error *
     flow->shift = padded ? 1 : 0;
     flow->pieces = spec->pieces + 2 * flow->shift;
     flow->features = spec->features;
-    flow->edge = th_alloc((size_t)flow->pieces + 1, sizeof *flow->edge);
-    flow->uniform = th_alloc((size_t)flow->pieces, sizeof *flow->uniform);
-    flow->feature = th_alloc((size_t)flow->features, sizeof *flow->feature);
+    flow->edge = th_take(flow->workspace, (size_t)flow->pieces + 1, sizeof *flow->edge);
+    flow->uniform = th_take(flow->workspace, (size_t)flow->pieces, sizeof *flow->uniform);
+    flow->feature = th_take(flow->workspace, (size_t)flow->features, sizeof *flow->feature);
     if (flow->edge == NULL || flow->uniform == NULL || flow->feature == NULL)
         return th_fail(err, TH_ENOMEM, "flow: %d pieces and %d features", flow->pieces,
                        flow->features);
@@ -206,8 +204,8 @@ static double largest_sound(const th_flow *flow, const th_flow_sample *sample, i
     return th_flow_refine(flow, sample, count, best, sound);
 }
 
-th_status th_flow_create(const th_flow_spec *spec, const th_ends *ends, th_flow **out,
-                         th_error *err)
+th_status th_flow_create_in(const th_flow_spec *spec, const th_ends *ends, th_workspace *workspace,
+                            th_flow **out, th_error *err)
 {
     th_status st = TH_EBUG;
     th_flow *flow = NULL;
@@ -224,11 +222,12 @@ th_status th_flow_create(const th_flow_spec *spec, const th_ends *ends, th_flow 
     st = check_spec(spec, err);
     if (st != TH_OK)
         return st;
-    flow = th_alloc(1, sizeof *flow);
+    flow = th_take(workspace, 1, sizeof *flow);
     if (flow == NULL) {
         st = th_fail(err, TH_ENOMEM, "flow: the object");
         goto done;
     }
+    flow->workspace = workspace;
     flow->ends = *ends;
     flow->eval = spec->eval;
     flow->ctx = spec->ctx;
@@ -262,23 +261,37 @@ th_status th_flow_create(const th_flow_spec *spec, const th_ends *ends, th_flow 
     *out = flow;
     flow = NULL;
 done:
-    free(sample);
+    th_give(workspace, sample);
     th_flow_destroy(flow);
     return st;
 }
 
+th_status th_flow_create(const th_flow_spec *spec, const th_ends *ends, th_flow **out,
+                         th_error *err)
+{
+    return th_flow_create_in(spec, ends, NULL, out, err);
+}
+
 void th_flow_destroy(th_flow *flow)
 {
+    th_workspace *workspace = flow != NULL ? flow->workspace : NULL;
+
     if (flow == NULL)
         return;
     if (flow->release != NULL)
         flow->release(flow->ctx);
-    free(flow->edge);
-    free(flow->uniform);
-    free(flow->feature);
-    free(flow->horizon);
-    free(flow->pocket);
-    free(flow);
+    th_give(workspace, flow->owned);
+    th_give(workspace, flow->edge);
+    th_give(workspace, flow->uniform);
+    th_give(workspace, flow->feature);
+    th_give(workspace, flow->horizon);
+    th_give(workspace, flow->pocket);
+    th_give(workspace, flow);
+}
+
+th_workspace *th_flow_workspace(const th_flow *flow)
+{
+    return flow->workspace;
 }
 
 int th_flow_pieces(const th_flow *flow)

@@ -12,8 +12,7 @@
 #include "inside.h"
 
 #include <gsl/gsl_math.h>
-
-#include "../alloc.h"
+#include <stdlib.h>
 
 /* v - c jumps at an edge when its two sides differ by more than this part of v; less is the noise
  * of a callback that computes the two sides differently. */
@@ -187,7 +186,7 @@ th_status th_flow_find_horizons(th_flow *flow, const th_flow_sample *sample, int
                                 th_error *err)
 {
     th_status st = TH_EBUG;
-    crossing *at = th_alloc((size_t)count, sizeof *at);
+    crossing *at = th_take(flow->workspace, (size_t)count, sizeof *at);
     int n;
 
     if (at == NULL) {
@@ -196,8 +195,8 @@ th_status th_flow_find_horizons(th_flow *flow, const th_flow_sample *sample, int
     }
     n = find_crossings(flow, sample, count, at);
     qsort(at, (size_t)n, sizeof *at, compare);
-    flow->horizon = th_alloc((size_t)n, sizeof *flow->horizon);
-    flow->pocket = th_alloc((size_t)n, sizeof *flow->pocket);
+    flow->horizon = th_take(flow->workspace, (size_t)n, sizeof *flow->horizon);
+    flow->pocket = th_take(flow->workspace, (size_t)n, sizeof *flow->pocket);
     if (flow->horizon == NULL || flow->pocket == NULL) {
         st = th_fail(err, TH_ENOMEM, "horizons: %d of them", n);
         goto done;
@@ -208,7 +207,7 @@ th_status th_flow_find_horizons(th_flow *flow, const th_flow_sample *sample, int
     flow->pockets = fill_pockets(flow, sample, count, at, n);
     st = TH_OK;
 done:
-    free(at);
+    th_give(flow->workspace, at);
     return st;
 }
 

@@ -7,13 +7,15 @@
 #ifndef TH_FLOW_INSIDE_H
 #define TH_FLOW_INSIDE_H
 
-#include "twinhorizon/flow.h"
+#include "workspace.h"
 
 struct th_flow {
     th_ends ends;
     void (*eval)(const void *ctx, int piece, double x, th_flow_point *point);
     void (*release)(void *ctx);
     void *ctx;
+    th_workspace *workspace; /* of every array below; may be NULL */
+    void *owned;             /* ctx, when it is a block of the workspace */
     int pieces;
     int shift; /* uniform pieces added on the left for walls: piece p is the callback's p - shift */
     double *edge;  /* [pieces + 1] */
@@ -45,9 +47,13 @@ typedef double (*th_flow_measure)(const th_flow_point *point);
  * not a row of horizons. */
 int th_flow_side(const th_flow_point *point);
 
+/** th_flow_create with the flow's own memory from a workspace; NULL: plain. */
+TH_MUST_USE th_status th_flow_create_in(const th_flow_spec *spec, const th_ends *ends,
+                                        th_workspace *workspace, th_flow **out, th_error *err);
+
 /* Probe the whole flow, dense around its features: samples in ascending order, one on either side
  * of every edge, and the peaks of v - c that cross to the other sign between two others; with open
- * ends the outside states come first and last. The caller frees *out. */
+ * ends the outside states come first and last. *out is a block of the flow's workspace. */
 TH_MUST_USE th_status th_flow_sample_all(const th_flow *flow, th_flow_sample **out, int *count,
                                          th_error *err);
 

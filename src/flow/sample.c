@@ -11,10 +11,8 @@
 #include "inside.h"
 
 #include <float.h>
+#include <gsl/gsl_sort.h>
 #include <math.h>
-#include <string.h>
-
-#include "../alloc.h"
 
 /* Even samples of a piece that is not uniform: resolve whatever has no feature of its own. */
 enum { EVEN_STEPS = 64 };
@@ -51,13 +49,6 @@ static double place(double x, const th_feature *f)
     double far = fmax(-GRADE_FAR, fmin(GRADE_FAR, (x - f->x) / f->width));
 
     return asinh(far) / GRADE_STEP;
-}
-
-static int compare(const void *a, const void *b)
-{
-    double x = *(const double *)a, y = *(const double *)b;
-
-    return (x > y) - (x < y);
 }
 
 /* The places of one piece, unsorted, edges included; x == NULL only counts them. */
@@ -191,9 +182,9 @@ th_status th_flow_sample_all(const th_flow *flow, th_flow_sample **out, int *cou
         total += here;
         most = here > most ? here : most;
     }
-    plain = th_alloc(total, sizeof *plain);
-    sample = th_alloc(2 * total, sizeof *sample);
-    x = th_alloc(most, sizeof *x);
+    plain = th_take(flow->workspace, total, sizeof *plain);
+    sample = th_take(flow->workspace, 2 * total, sizeof *sample);
+    x = th_take(flow->workspace, most, sizeof *x);
     if (plain == NULL || sample == NULL || x == NULL) {
         st = th_fail(err, TH_ENOMEM, "flow: %zu samples", total);
         goto done;
@@ -203,7 +194,7 @@ th_status th_flow_sample_all(const th_flow *flow, th_flow_sample **out, int *cou
     for (int p = 0; p < flow->pieces; p++) {
         size_t here = places(flow, p, x);
 
-        qsort(x, here, sizeof *x, compare);
+        gsl_sort(x, 1, here); /* in place, where qsort may ask for memory */
         for (size_t i = 0; i < here; i++)
             if (i == 0 || x[i] > x[i - 1])
                 plain[n++] = (th_flow_sample){.piece = p, .x = x[i]};
@@ -217,9 +208,9 @@ th_status th_flow_sample_all(const th_flow *flow, th_flow_sample **out, int *cou
     sample = NULL;
     st = TH_OK;
 done:
-    free(x);
-    free(plain);
-    free(sample);
+    th_give(flow->workspace, x);
+    th_give(flow->workspace, plain);
+    th_give(flow->workspace, sample);
     return st;
 }
 

@@ -26,8 +26,6 @@
 
 #include <math.h>
 
-#include "../alloc.h"
-
 enum { SOUND_UPSTREAM, MACH, GAP, KEYS };
 
 typedef struct {
@@ -72,7 +70,6 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     double width = hypot(a, asin(m)) / kappa;
     th_feature feature[2] = {{.x = -half, .width = width}, {.x = half, .width = width}};
     th_flow_spec spec = {.eval = eval,
-                         .release = free,
                          .pieces = 3,
                          .edge = edge,
                          .uniform = uniform,
@@ -85,7 +82,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
         return th_fail_key(err, TH_EINVAL, "kind",
                            "shape barriers cannot close on a ring: its solitons need open ends or "
                            "walls");
-    b = th_alloc(1, sizeof *b);
+    b = th_take(setup->workspace, 1, sizeof *b);
     if (b == NULL)
         return th_fail(err, TH_ENOMEM, "shape barriers: its parameters");
     *b = (barriers){.density = setup->density,
@@ -102,9 +99,9 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     edge[2] = half;
     edge[3] = half + reach;
     spec.ctx = b;
-    st = th_flow_create(&spec, ends, out, err);
+    st = th_shape_flow(setup, &spec, out, err);
     if (st != TH_OK)
-        free(b);
+        th_give(setup->workspace, b);
     return st;
 }
 

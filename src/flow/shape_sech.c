@@ -9,8 +9,6 @@
 
 #include <math.h>
 
-#include "../alloc.h"
-
 enum { SPEED, SOUND_UPSTREAM, DEPTH, WIDTH, KEYS };
 
 typedef struct {
@@ -59,14 +57,14 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     bool ring = ends->kind == TH_ENDS_RING, room = ring && seam > reach;
     double edge[4] = {-seam, -reach, reach, seam};
     th_feature centre = {.x = 0, .width = value[WIDTH]};
-    th_flow_spec spec = {.eval = eval, .release = free, .features = 1, .feature = &centre};
+    th_flow_spec spec = {.eval = eval, .features = 1, .feature = &centre};
     sech *s = NULL;
     th_status st;
 
     st = check(value, ends, relative, err);
     if (st != TH_OK)
         return st;
-    s = th_alloc(1, sizeof *s);
+    s = th_take(setup->workspace, 1, sizeof *s);
     if (s == NULL)
         return th_fail(err, TH_ENOMEM, "shape sech: its parameters");
     *s = (sech){.n = setup->density,
@@ -83,9 +81,9 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     spec.pieces = room ? 3 : 1;
     spec.edge = room ? edge : edge + 1;
     spec.uniform = room ? three : one;
-    st = th_flow_create(&spec, ends, out, err);
+    st = th_shape_flow(setup, &spec, out, err);
     if (st != TH_OK)
-        free(s);
+        th_give(setup->workspace, s);
     return st;
 }
 

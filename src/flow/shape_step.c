@@ -9,8 +9,6 @@
 
 #include <math.h>
 
-#include "../alloc.h"
-
 enum { SPEED, SOUND_UPSTREAM, SOUND_POCKET, SOUND_DOWNSTREAM, GAP, KEYS };
 
 typedef struct {
@@ -35,14 +33,14 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     bool ring = ends->kind == TH_ENDS_RING;
     double half = value[GAP] / 2, seam = ends->circumference / 2;
     double edge[4] = {-seam, -half, half, seam};
-    th_flow_spec spec = {.eval = eval, .release = free, .uniform = uniform};
+    th_flow_spec spec = {.eval = eval, .uniform = uniform};
     step *s = NULL;
     th_status st;
 
     st = th_shape_fits_ring(ends, value[SOUND_UPSTREAM], value[SOUND_DOWNSTREAM], value[GAP], err);
     if (st != TH_OK)
         return st;
-    s = th_alloc(1, sizeof *s);
+    s = th_take(setup->workspace, 1, sizeof *s);
     if (s == NULL)
         return th_fail(err, TH_ENOMEM, "shape step: its parameters");
     s->n = setup->density;
@@ -54,9 +52,9 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     spec.ctx = s;
     spec.pieces = ring ? 3 : 1;
     spec.edge = ring ? edge : edge + 1;
-    st = th_flow_create(&spec, ends, out, err);
+    st = th_shape_flow(setup, &spec, out, err);
     if (st != TH_OK)
-        free(s);
+        th_give(setup->workspace, s);
     return st;
 }
 

@@ -12,8 +12,6 @@
 
 #include <math.h>
 
-#include "../alloc.h"
-
 enum { SPEED, SOUND_UPSTREAM, SOUND_POCKET, SOUND_DOWNSTREAM, WIDTH_BLACK, WIDTH_WHITE, GAP, KEYS };
 
 typedef struct {
@@ -48,13 +46,13 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     th_error inner = {0};
     double half = value[GAP] / 2;
     th_feature feature[2];
-    th_flow_spec spec = {.eval = eval, .release = free};
+    th_flow_spec spec = {.eval = eval};
     smooth *s = NULL;
 
     st = th_shape_fits_ring(ends, value[SOUND_UPSTREAM], value[SOUND_DOWNSTREAM], value[GAP], err);
     if (st != TH_OK)
         return st;
-    s = th_alloc(1, sizeof *s);
+    s = th_take(setup->workspace, 1, sizeof *s);
     if (s == NULL)
         return th_fail(err, TH_ENOMEM, "shape tanh: its parameters");
     s->n = setup->density;
@@ -76,7 +74,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
         goto done;
     th_edges_spec(&s->c, &spec, feature);
     spec.ctx = s;
-    st = th_flow_create(&spec, ends, out, &inner);
+    st = th_shape_flow(setup, &spec, out, &inner);
     if (st == TH_OK)
         s = NULL;                                     /* the flow owns it */
     else if (st == TH_EINVAL && inner.key[0] == '\0') /* the one rule not checked above: c > 0 */
@@ -87,7 +85,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     else if (err != NULL)
         *err = inner;
 done:
-    free(s);
+    th_give(setup->workspace, s);
     return st;
 }
 

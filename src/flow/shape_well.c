@@ -15,8 +15,6 @@
 
 #include <math.h>
 
-#include "../alloc.h"
-
 enum { SOUND_UPSTREAM, MACH, GAP, KEYS };
 
 typedef struct {
@@ -60,7 +58,6 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     /* v = J/n varies faster than n when m is small: n doubles over m/kappa. */
     th_feature feature[2] = {{.x = -half, .width = m / kappa}, {.x = half, .width = m / kappa}};
     th_flow_spec spec = {.eval = eval,
-                         .release = free,
                          .pieces = 3,
                          .edge = edge,
                          .uniform = uniform,
@@ -73,7 +70,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
         return th_fail_key(err, TH_EINVAL, "kind",
                            "shape well cannot close on a ring: its solitons need open ends or "
                            "walls");
-    w = th_alloc(1, sizeof *w);
+    w = th_take(setup->workspace, 1, sizeof *w);
     if (w == NULL)
         return th_fail(err, TH_ENOMEM, "shape well: its parameters");
     *w = (well){
@@ -84,9 +81,9 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     edge[2] = half;
     edge[3] = half + reach;
     spec.ctx = w;
-    st = th_flow_create(&spec, ends, out, err);
+    st = th_shape_flow(setup, &spec, out, err);
     if (st != TH_OK)
-        free(w);
+        th_give(setup->workspace, w);
     return st;
 }
 

@@ -136,6 +136,16 @@ static th_status read_value(const th_flow_setup *setup, int i, double *value, th
     return TH_OK;
 }
 
+th_status th_shape_flow(const th_flow_setup *setup, const th_flow_spec *spec, th_flow **out,
+                        th_error *err)
+{
+    const th_status st = th_flow_create_in(spec, &setup->ends, setup->workspace, out, err);
+
+    if (st == TH_OK)
+        (*out)->owned = spec->ctx;
+    return st;
+}
+
 th_status th_flow_build(const th_flow_setup *setup, th_flow **out, th_error *err)
 {
     th_flow_setup full;

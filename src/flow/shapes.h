@@ -6,7 +6,7 @@
 #ifndef TH_FLOW_SHAPES_H
 #define TH_FLOW_SHAPES_H
 
-#include "twinhorizon/flow.h"
+#include "workspace.h"
 
 extern const th_shape th_shape_step;
 extern const th_shape th_shape_tanh;
@@ -33,5 +33,12 @@ double th_tail_reach(double relative, double width, double sound);
  * pocket must be shorter than the ring (key gap); nothing is asked of other ends. */
 TH_MUST_USE th_status th_shape_fits_ring(const th_ends *ends, double sound_upstream,
                                          double sound_downstream, double gap, th_error *err);
+
+/**
+ * What a shape's build ends in: th_flow_create in the workspace of the setup. spec->ctx is a block
+ * of it (th_take), which the flow gives back in the end if this succeeds; spec->release is NULL.
+ */
+TH_MUST_USE th_status th_shape_flow(const th_flow_setup *setup, const th_flow_spec *spec,
+                                    th_flow **out, th_error *err);
 
 #endif

@@ -12,15 +12,15 @@
 #include "twinhorizon/matching.h"
 
 #include <gsl/gsl_math.h>
-#include <stdlib.h>
 
-#include "alloc.h"
+#include "flow/workspace.h"
 #include "matching/ends.h"
 #include "matching/ring.h"
 #include "matching/steps.h"
 #include "matching/transfer.h"
 
 struct th_matching {
+    th_workspace *workspace; /* the flow's */
     th_steps steps;
     th_ends_kind ends;
     th_end left, right;           /* open ends */
@@ -92,9 +92,10 @@ th_status th_matching_create(const th_flow *flow, double omega_top, th_matching_
     if (flow == NULL || !(omega_top > 0.0 && isfinite(omega_top)))
         return th_fail(err, TH_EINVAL, "matching: want a flow and omega_top > 0, got %g",
                        omega_top);
-    m = th_alloc(1, sizeof *m);
+    m = th_take(th_flow_workspace(flow), 1, sizeof *m);
     if (m == NULL)
         return th_fail(err, TH_ENOMEM, "matching: one object");
+    m->workspace = th_flow_workspace(flow);
     m->ends = th_flow_ends(flow).kind;
     st = th_steps_create(flow, omega_top, grain, meeting_point(flow), &m->steps, err);
     if (st != TH_OK) {
@@ -117,7 +118,7 @@ void th_matching_destroy(th_matching *matching)
     if (matching == NULL)
         return;
     th_steps_clear(&matching->steps);
-    free(matching);
+    th_give(matching->workspace, matching);
 }
 
 static double complex inner(const double complex a[4], const double complex b[4])

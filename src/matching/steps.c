@@ -10,11 +10,10 @@
 
 #include <float.h>
 #include <gsl/gsl_math.h>
-#include <stdlib.h>
 #include <string.h>
 
-#include "alloc.h"
 #include "dispersion.h"
+#include "flow/workspace.h"
 
 /* Degree of interpolation, degree by which the coefficients must have died, and degree from which
  * on they are noise when they have. */
@@ -149,7 +148,7 @@ static th_status push(th_steps *s, const th_step *step, th_error *err)
 {
     if (s->count == s->room) {
         int room = s->room > 0 ? 2 * s->room : 32;
-        th_step *grown = realloc(s->step, (size_t)room * sizeof *grown);
+        th_step *grown = th_stretch(s->workspace, s->step, (size_t)room * sizeof *grown);
 
         if (grown == NULL)
             return th_fail(err, TH_ENOMEM, "matching: %d steps", room);
@@ -227,7 +226,7 @@ th_status th_steps_create(const th_flow *flow, double omega_top, th_matching_gra
     th_flow_point at;
     int edges;
 
-    *out = (th_steps){0};
+    *out = (th_steps){.workspace = th_flow_workspace(flow)};
     prepare(&c);
     edge = th_flow_edges(flow, &edges);
     th_flow_eval(flow, 0, edge[0], &at);
@@ -255,6 +254,6 @@ th_status th_steps_create(const th_flow *flow, double omega_top, th_matching_gra
 
 void th_steps_clear(th_steps *steps)
 {
-    free(steps->step);
+    th_give(steps->workspace, steps->step);
     *steps = (th_steps){0};
 }

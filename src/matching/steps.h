@@ -28,7 +28,8 @@ typedef struct {
 
 /* Steps from left to right. */
 typedef struct {
-    th_step *step; /* [count] */
+    th_workspace *workspace; /* the flow's */
+    th_step *step;           /* [count] */
     int count;
     int match; /* solutions from the left meet those from the right before step[match] */
     int room;

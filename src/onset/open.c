@@ -19,9 +19,14 @@
 #include "onset/root.h"
 #include "twinhorizon/index.h"
 
-/* The search starts at this part of upto: far below any length that means something, far above the
- * rounding of A, whose slope is about the wave number in the pocket. */
+/* The search starts at this part of the shortest healing length, or of upto if that is less: far
+ * below any length that means something, whatever is searched. */
 #define LOWEST 1e-9
+/* Longest search, in shortest healing lengths: a thousand times the longest condensate. Angles are
+ * then good to nine digits still. */
+#define LONGEST 1e6
+/* Most changes that are listed: hours of work, and more than anyone reads. */
+enum { CHANGES_MAX = 100000 };
 /* A root is found when the next step is below this part of its length; the step is made still, and
  * what is left of it is smaller by the error of the slope. */
 #define STEP_SMALL 1e-12
@@ -38,6 +43,34 @@ typedef struct {
     const th_flow_setup *setup;
     int key;
 } search;
+
+/* Shortest healing length 1/c of the flow of the setup's own length, else of length `upto`. */
+static th_status healing(const search *w, double upto, double *xi, th_error *err)
+{
+    const double own = w->setup->given[w->key] ? w->setup->value[w->key] : upto;
+    const th_flow_setup at = th_onset_setup(w->setup, w->key, own);
+    th_flow *flow = NULL;
+    th_status st = th_flow_build(&at, &flow, err);
+
+    if (st == TH_OK)
+        *xi = 1 / th_flow_sound_max(flow);
+    th_flow_destroy(flow);
+    return st;
+}
+
+/* From where to search; TH_EINVAL when upto is out of reach. */
+static th_status choose_start(const search *w, double upto, double *start, th_error *err)
+{
+    double xi = 0;
+    th_status st = healing(w, upto, &xi, err);
+
+    *start = LOWEST * fmin(upto, xi);
+    if (st == TH_OK && upto > LONGEST * xi)
+        return th_fail(err, TH_EINVAL,
+                       "onset: upto is %.3g healing lengths, the search ends at %g: ask for less",
+                       upto / xi, LONGEST);
+    return st;
+}
 
 static th_status measure(const search *w, double x, sample *out, th_error *err)
 {
@@ -184,10 +217,12 @@ th_status th_onset_open(const th_flow_setup *setup, const th_onset_options *opti
     const search w = {setup, th_onset_key(setup->shape)};
     const th_trail nothing = {0}, *known = trail != NULL ? trail : &nothing;
     sample low, top;
-    double *slopes = NULL, slope;
+    double *slopes = NULL, slope, start = 0;
     int last;
-    th_status st = measure(&w, LOWEST * options->upto, &low, err);
+    th_status st = choose_start(&w, options->upto, &start, err);
 
+    if (st == TH_OK)
+        st = measure(&w, start, &low, err);
     if (st == TH_OK)
         st = measure(&w, options->upto, &top, err);
     if (st != TH_OK)
@@ -199,6 +234,11 @@ th_status th_onset_open(const th_flow_setup *setup, const th_onset_options *opti
     out->complete = options->orders == 0 || last - out->before <= options->orders;
     if (!out->complete)
         last = out->before + options->orders;
+    if (last - out->before > CHANGES_MAX)
+        return th_fail(err, TH_EINVAL,
+                       "onset: %d changes up to there, want at most %d: ask for fewer orders or a "
+                       "shorter upto",
+                       last - out->before, (int)CHANGES_MAX);
     if (last > out->before)
         slopes = th_alloc((size_t)(last - out->before), sizeof *slopes);
     if (last > out->before && slopes == NULL)

@@ -10,6 +10,7 @@
 #include "twinhorizon/point.h"
 
 #include <complex.h>
+#include <gsl/gsl_heapsort.h>
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -233,8 +234,8 @@ static th_status answer_open(answer *a, double accuracy, const th_point *const p
         return st;
     if (!settled(a))
         return solve_fully(a, accuracy, err);
-    if (a->point->count > 1) /* qsort must not be given NULL */
-        qsort(a->point->mode, (size_t)a->point->count, sizeof *a->point->mode, by_growth);
+    if (a->point->count > 1) /* in place, where qsort may ask for memory */
+        gsl_heapsort(a->point->mode, (size_t)a->point->count, sizeof *a->point->mode, by_growth);
     for (int i = 0; i < a->point->count; i++)
         a->point->mode[i].confirmed |= TH_BY_CENSUS | (a->point->index_known ? TH_BY_INDEX : 0u);
     a->point->state = TH_POINT_OK;

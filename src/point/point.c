@@ -6,8 +6,9 @@
  * a line in each of the functions below. Proof: tests/test_journal.c. */
 #include "twinhorizon/point.h"
 
-#include <stdlib.h>
 #include <string.h>
+
+#include "workspace.h"
 
 const char *th_point_state_text(th_point_state state)
 {
@@ -27,7 +28,8 @@ th_status th_point_resize(th_point *point, int count, th_error *err)
     if (point == NULL || count < 0)
         return th_fail(err, TH_EINVAL, "point: want a point and count >= 0, not %d", count);
     if (count > point->room) {
-        th_point_mode *mode = realloc(point->mode, (size_t)count * sizeof *mode);
+        th_point_mode *mode =
+            th_stretch(point->workspace, point->mode, (size_t)count * sizeof *mode);
 
         if (mode == NULL)
             return th_fail(err, TH_ENOMEM, "point: %d modes", count);
@@ -42,6 +44,7 @@ th_status th_point_resize(th_point *point, int count, th_error *err)
 
 th_status th_point_copy(const th_point *from, th_point *to, th_error *err)
 {
+    th_workspace *workspace;
     th_point_mode *mode;
     int room;
     th_status st;
@@ -51,9 +54,11 @@ th_status th_point_copy(const th_point *from, th_point *to, th_error *err)
     st = th_point_resize(to, from->count, err);
     if (st != TH_OK)
         return st;
+    workspace = to->workspace;
     mode = to->mode;
     room = to->room;
     *to = *from;
+    to->workspace = workspace;
     to->mode = mode;
     to->room = room;
     if (from->count > 0)
@@ -65,6 +70,6 @@ void th_point_clear(th_point *point)
 {
     if (point == NULL)
         return;
-    free(point->mode);
+    th_give(point->workspace, point->mode);
     *point = (th_point){0};
 }

@@ -2,15 +2,14 @@
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
  * Identity of modes along one axis of a sweep. In: the points of a line, in order. Out:
- * a branch number for each mode. Calls nobody.
+ * a branch number for each mode. Calls workspace.
  * Symbols: re, im frequency; dre, dim its last step. Proof: tests/test_sweep.c. */
 #include "twinhorizon/sweep.h"
 
+#include <gsl/gsl_heapsort.h>
 #include <math.h>
-#include <stdlib.h>
-#include <string.h>
 
-#include "alloc.h"
+#include "workspace.h"
 
 typedef struct {
     double apart;
@@ -30,17 +29,17 @@ static int by_distance(const void *a, const void *b)
 
 static void release(th_branches *line)
 {
-    free(line->branch);
-    free(line->re);
-    free(line->im);
-    free(line->dre);
-    free(line->dim);
+    th_give(line->workspace, line->branch);
+    th_give(line->workspace, line->re);
+    th_give(line->workspace, line->im);
+    th_give(line->workspace, line->dre);
+    th_give(line->workspace, line->dim);
 }
 
 void th_branches_clear(th_branches *line)
 {
     release(line);
-    memset(line, 0, sizeof *line);
+    *line = (th_branches){.workspace = line->workspace};
 }
 
 th_status th_branches_next(th_branches *line, const th_point *point, double reach, int *branch,
@@ -48,17 +47,19 @@ th_status th_branches_next(th_branches *line, const th_point *point, double reac
 {
     th_status st = TH_EBUG;
     const size_t n = (size_t)point->count, m = (size_t)line->count;
-    th_branches next = {.count = point->count, .last = line->last};
-    pairing *pair = th_alloc(n * m, sizeof *pair);
-    int *from = th_alloc(n, sizeof *from); /* [n] 1 + index at the previous point, 0 when new */
-    int *taken = th_alloc(m, sizeof *taken);
+    th_workspace *const memory = line->workspace;
+    th_branches next = {.workspace = memory, .count = point->count, .last = line->last};
+    pairing *pair = th_take(memory, n * m, sizeof *pair);
+    int *from =
+        th_take(memory, n, sizeof *from); /* [n] 1 + index at the previous point, 0 when new */
+    int *taken = th_take(memory, m, sizeof *taken);
     size_t pairs = 0;
 
-    next.branch = th_alloc(n, sizeof *next.branch);
-    next.re = th_alloc(n, sizeof *next.re);
-    next.im = th_alloc(n, sizeof *next.im);
-    next.dre = th_alloc(n, sizeof *next.dre);
-    next.dim = th_alloc(n, sizeof *next.dim);
+    next.branch = th_take(memory, n, sizeof *next.branch);
+    next.re = th_take(memory, n, sizeof *next.re);
+    next.im = th_take(memory, n, sizeof *next.im);
+    next.dre = th_take(memory, n, sizeof *next.dre);
+    next.dim = th_take(memory, n, sizeof *next.dim);
     if (pair == NULL || from == NULL || taken == NULL || next.branch == NULL || next.re == NULL ||
         next.im == NULL || next.dre == NULL || next.dim == NULL) {
         st = th_fail(err, TH_ENOMEM, "sweep: branches of %d modes", point->count);
@@ -72,7 +73,8 @@ th_status th_branches_next(th_branches *line, const th_point *point, double reac
             if (apart <= reach)
                 pair[pairs++] = (pairing){apart, (int)j, (int)i};
         }
-    qsort(pair, pairs, sizeof *pair, by_distance);
+    if (pairs > 0) /* in place, where qsort may ask for memory */
+        gsl_heapsort(pair, pairs, sizeof *pair, by_distance);
     for (size_t k = 0; k < pairs; k++) {
         if (taken[pair[k].before] || from[pair[k].now] != 0)
             continue;
@@ -91,12 +93,12 @@ th_status th_branches_next(th_branches *line, const th_point *point, double reac
     }
     release(line);
     *line = next;
-    memset(&next, 0, sizeof next);
+    next = (th_branches){.workspace = memory};
     st = TH_OK;
 done:
     release(&next);
-    free(pair);
-    free(from);
-    free(taken);
+    th_give(memory, pair);
+    th_give(memory, from);
+    th_give(memory, taken);
     return st;
 }

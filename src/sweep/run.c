@@ -103,10 +103,12 @@ static void look_back(memory *m, const th_point *previous[2])
 }
 
 th_status th_sweep_run_block(const th_case *c, long block, const th_point *known, int knowns,
+                             th_workspace *workspace,
                              th_status (*sink)(void *ctx, const th_point *point, th_error *err),
                              void *ctx, const atomic_int *stop, th_error *err)
 {
-    memory m = {0};
+    memory m = {
+        .point = {{.workspace = workspace}, {.workspace = workspace}, {.workspace = workspace}}};
     long first;
     int count;
     th_status st = TH_OK;
@@ -120,9 +122,10 @@ th_status th_sweep_run_block(const th_case *c, long block, const th_point *known
         if (i < knowns) {
             st = th_point_copy(&known[i], next, err);
         } else {
-            const th_flow_setup setup = th_sweep_setup(c, first + i);
+            th_flow_setup setup = th_sweep_setup(c, first + i);
             const th_point *previous[2];
 
+            setup.workspace = workspace;
             look_back(&m, previous);
             next->number = first + i;
             st = th_point_answer(&setup, c->accuracy, previous, next, err);
@@ -140,8 +143,49 @@ typedef struct {
     const th_case *c;
     const th_sweep_options *options;
     th_journal *journal;
-    pthread_mutex_t lock; /* of the journal and of options->done */
+    pthread_mutex_t lock; /* of the journal, of options->done and of what follows */
+    th_workspace **idle;  /* [threads] the first idles are free */
+    int idles;
 } sweep;
+
+/* A workspace for each thread: so many blocks are in hand at most. */
+static th_status furnish(sweep *s, th_error *err)
+{
+    th_status st = TH_OK;
+
+    s->idle = th_alloc((size_t)s->options->threads, sizeof *s->idle);
+    if (s->idle == NULL)
+        return th_fail(err, TH_ENOMEM, "sweep: workspaces of %d threads", s->options->threads);
+    while (st == TH_OK && s->idles < s->options->threads) {
+        st = th_workspace_create(&s->idle[s->idles], err);
+        s->idles += st == TH_OK;
+    }
+    return st;
+}
+
+static void clear_out(sweep *s)
+{
+    while (s->idles > 0)
+        th_workspace_destroy(s->idle[--s->idles]);
+    free(s->idle);
+}
+
+static th_workspace *borrow(sweep *s)
+{
+    th_workspace *workspace;
+
+    (void)pthread_mutex_lock(&s->lock);
+    workspace = s->idle[--s->idles];
+    (void)pthread_mutex_unlock(&s->lock);
+    return workspace;
+}
+
+static void bring_back(sweep *s, th_workspace *workspace)
+{
+    (void)pthread_mutex_lock(&s->lock);
+    s->idle[s->idles++] = workspace;
+    (void)pthread_mutex_unlock(&s->lock);
+}
 
 static th_status record(void *ctx, const th_point *point, th_error *err)
 {
@@ -175,18 +219,22 @@ static th_status work(void *ctx, long item, th_error *err)
 {
     sweep *s = ctx;
     const long block = s->options->part - 1 + item * s->options->parts;
+    th_workspace *workspace = borrow(s);
     th_point known[TH_SWEEP_BLOCK];
     long first;
     int count, knowns = 0;
     th_status st;
 
-    memset(known, 0, sizeof known);
+    for (int i = 0; i < TH_SWEEP_BLOCK; i++)
+        known[i] = (th_point){.workspace = workspace};
     th_sweep_block(s->c, block, &first, &count);
     st = recall(s, first, count, known, &knowns, err);
     if (st == TH_OK && knowns < count)
-        st = th_sweep_run_block(s->c, block, known, knowns, record, s, s->options->stop, err);
+        st = th_sweep_run_block(s->c, block, known, knowns, workspace, record, s, s->options->stop,
+                                err);
     for (int i = 0; i < TH_SWEEP_BLOCK; i++)
         th_point_clear(&known[i]);
+    bring_back(s, workspace);
     return st;
 }
 
@@ -206,8 +254,12 @@ th_status th_sweep_run(const th_case *c, const th_sweep_options *options, th_jou
     blocks = th_sweep_blocks(c);
     if (pthread_mutex_init(&s.lock, NULL) != 0)
         return th_fail(err, TH_ENOMEM, "sweep: one lock");
-    st = th_parallel(options->threads, (blocks - options->part + options->parts) / options->parts,
-                     work, &s, options->stop, err);
+    st = furnish(&s, err);
+    if (st == TH_OK)
+        st = th_parallel(options->threads,
+                         (blocks - options->part + options->parts) / options->parts, work, &s,
+                         options->stop, err);
+    clear_out(&s);
     (void)pthread_mutex_destroy(&s.lock);
     return st;
 }
