@@ -9,7 +9,7 @@
  * keeps the mass, Int n eta dx = 0. The number of negative directions equals
  * k_r + 2 k_c + 2 k_i^- (growing, growing pairs, neutral modes of negative energy): the
  * Hamiltonian-Krein index, Physica D 195, 263 (2004). Symbols as in operator.c.
- * Proof: tests/test_modes.c (rings: index against the modes found). */
+ * Proof: tests/test_closed_index.c; tests/test_modes.c (index against the modes found). */
 #include "twinhorizon/index.h"
 
 #include <float.h>

@@ -17,16 +17,17 @@ extern "C" {
 
 /* The certified region is |Re omega| < re_max, floor < Im omega < im_max, |omega| > slowest. */
 typedef struct {
-    int growing;       /* modes in the region, both signs of Re omega */
-    int slow;          /* open ends: modes with |omega| < slowest, growing or not, both signs of
-                          Re omega; in a flow that is not within a hair of a switch-on there are
-                          none */
-    int neutral;       /* rings, walls: modes with |Im omega| < floor and 0 < Re omega < re_max; 0
-                          for open ends */
-    double re_max;     /* well beyond the top of the negative-energy band */
-    double im_max;     /* rigorous bound on growth rates (th_growth_bound) */
-    double floor;      /* 0 for open ends: the contour runs on the real axis itself */
-    double slowest;    /* 0 for rings and walls, where floor does its work */
+    int growing;    /* modes in the region, both signs of Re omega */
+    int slow;       /* open ends: modes with |omega| < slowest, growing or not, both signs of
+                       Re omega; in a flow that is not within a hair of a switch-on there are
+                       none */
+    int neutral;    /* rings, walls: modes with |Im omega| < floor and 0 < Re omega < re_max; 0
+                       for open ends */
+    double re_max;  /* well beyond the top of the negative-energy band */
+    double im_max;  /* rigorous bound on growth rates (th_growth_bound), or ten times the floor of
+                       neutral modes where that is more */
+    double floor;   /* 0 for open ends: the contour runs on the real axis itself */
+    double slowest; /* 0 for rings and walls, where floor does its work */
     double worst_step; /* largest phase step between neighbouring samples, radians, < pi/4 */
     long evaluations;  /* of the matching function */
 } th_census;
@@ -58,14 +59,13 @@ TH_MUST_USE th_status th_census_count(const th_flow *flow, const th_matching *ma
                                       double omega_top, th_census *out, th_error *err);
 
 /**
- * Count and find: subdivide the region by the argument principle until every part holds one mode,
- * and polish it. Open ends only.
+ * Count, find and polish: the growing modes of the region, as many as were counted. Open ends only.
  *
  * Slow modes (|omega| < out->slowest) are counted in out->slow and not listed: within about a
  * millionth of a switch-on, growing + slow equals the static index, not growing alone.
  *
  * @param[out] omega  [*count][2] (Re, Im) of the growing modes with Re omega >= 0, by falling Im;
- *the caller frees it (plain memory); NULL after a failure
+ *                    the caller frees it (plain memory); NULL after a failure
  * @retval TH_EUNDECIDED  as th_census_count, or a mode that was counted could not be pinned down
  * @retval TH_EINVAL      not open ends
  */

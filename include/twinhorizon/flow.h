@@ -181,7 +181,7 @@ typedef struct {
     const char *const *word; /* the key takes one of these words, NULL ends the list; its value is
                                 the place of the word. NULL: a number */
     bool file;       /* the key names a table, which goes to th_flow_setup.data; one a shape */
-    const char *doc; /* one line for manual pages */
+    const char *doc; /* one line of documentation */
 } th_shape_key;
 
 /** Whether a key takes a number: it can be swept, have a tolerance, a sensitivity. */

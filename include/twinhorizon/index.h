@@ -2,9 +2,10 @@
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
  * The static index: how many negative eigenvalues the static operator
- * K eta = -(n eta')' + 4 n (c^2 - v^2) eta of a flow has. What goes in: a flow with open, subsonic
- * ends. What comes out: the number and how far the flow is from the nearest change of it. Depends
- * on flow, status. */
+ * K eta = -(n eta')' + 4 n (c^2 - v^2) eta of a flow has. What goes in: a flow with open,
+ * subsonic ends, a ring or a box. What comes out: the number (for rings and boxes what it leaves
+ * for the modes) and with open ends how far the flow is from the nearest change of it. Depends on
+ * flow, status. */
 #ifndef TWINHORIZON_INDEX_H
 #define TWINHORIZON_INDEX_H
 

@@ -35,8 +35,8 @@ void th_confirmed_text(unsigned confirmed, char *buffer);
 typedef struct {
     double omega_re, omega_im; /* fluctuations go as e^{-i omega t} */
     double omega_error;        /* bound on |error of omega|: from the matching function its last
-                                  step and the difference of two integrations; without it the
-                                  disagreement of two matrices plus rounding times condition */
+                                  step and the difference of two integrations; without it twice
+                                  the disagreement of two matrices plus rounding times condition */
     double shift;              /* |matrix - matching function|, 0 when only one of them knows it */
     th_label label;
     int norm;            /* sign of 2 Int n Im(eta phi*) dx: +1 ordinary phonon, -1 negative
@@ -79,7 +79,7 @@ typedef struct {
     int zero_modes; /* rings: 2, the phase and its partner, deflated; else 0 */
     th_verdict verdict;
     char reason[256]; /* why undecided; "" otherwise */
-    int unknowns;     /* size of the matrix */
+    int unknowns;     /* of the coarse matrix, which yields the candidates */
     bool dense;       /* all its eigenvalues were computed; false above TH_ORDINARY_SIZE, where
                          growing modes come from the matching function, the matrix is only asked
                          for the eigenvalue next to each, and damped modes are not listed */

@@ -38,7 +38,8 @@ typedef struct {
     int index, census;
     int unstable;            /* growing modes, both signs of Re omega */
     th_workspace *workspace; /* of `mode`; NULL: plain memory */
-    int count, room;         /* modes listed: growing ones with open ends, all in the band else */
+    int count, room;         /* modes listed: growing ones where the counts settle the answer,
+                                all of th_solve else */
     th_point_mode *mode;     /* [count] by falling Im omega, then rising Re omega */
     char message[256];       /* why undecided or failed; "" otherwise; no control characters */
 } th_point;
@@ -59,7 +60,8 @@ void th_point_clear(th_point *point);
  * @param[in]  setup     configuration of this point, with the workspace to use
  * @param[in]  accuracy  as th_solve_options
  * @param[in]  previous  [2] the last point and the one before on the same line of the sweep, or
- *                       NULL where there is none; equally spaced
+ *                       NULL where there is none; the values of the axis may be
+ *                       spaced as they like: a bad prediction costs time only
  * @param[out] point     everything but number is set
  *
  * Open ends: predicted roots are polished; when they do not add up to index and census the global

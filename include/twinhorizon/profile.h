@@ -42,7 +42,7 @@ extern "C" {
  * @retval TH_ENONE      the matrix has no eigenvalue next to omega; or on these positions the mode
  *                       is zero everywhere, or somewhere beyond the range of numbers
  * @retval TH_EUNDECIDED omega is so strongly damped that its waves beyond an open end are not known
- * @retval TH_ENOMEM, TH_ECONVERGE, TH_EUNDECIDED  as th_solve
+ * @retval TH_ENOMEM, TH_ECONVERGE  as th_solve
  *
  * After a failure the arrays hold nothing usable. Reentrant. Cost: one band factorisation a step of
  * the iteration for one eigenvalue, some milliseconds, and a few hundred operations a position.

@@ -18,27 +18,42 @@ enum { CLI_DONE = 0, CLI_UNDECIDED = 1, CLI_USAGE = 2, CLI_INTERNAL = 3 };
 
 /* ---- options.c ------------------------------------------------------------------------------ */
 
+/* What the value of an option is for. */
+typedef enum {
+    CLI_PLAIN,
+    CLI_NEEDED, /* the command is wrong without it */
+    CLI_FILE,   /* a file that the command writes */
+    CLI_TABLE   /* the same with its metadata beside it; - is standard output */
+} cli_use;
+
 /* An option of a command: "--name VALUE", or "--name" alone when value is NULL. */
 typedef struct {
     const char *name;  /* with its dashes */
     const char *value; /* word for the value in the help */
     const char *doc;
     const char **place; /* where the value, or the name alone, goes */
+    cli_use use;
 } cli_option;
 
-enum { CLI_SET_MAX = 64 };
+enum { CLI_SET_MAX = 64, CLI_OUTPUTS_MAX = 4, CLI_PATH_MAX = 4096 };
 
 /* What stands on the command line of a command that takes one case. */
 typedef struct {
     const char *case_path;
     const char *set[CLI_SET_MAX]; /* --set section.key=value, in order */
     int sets;
+    const cli_option *output[CLI_OUTPUTS_MAX]; /* options that name files to be written */
+    int outputs;
+    char target[CLI_OUTPUTS_MAX][CLI_PATH_MAX]; /* where links lead */
 } cli_arguments;
 
 /* Read "CASE [--set ...] [options]". Prints one sentence and returns CLI_USAGE when it is wrong;
  * prints the help and returns -1 (exit 0) for --help. */
 int cli_read(const char *command, const char *summary, int argc, char **argv,
              const cli_option *option, int options, cli_arguments *out);
+
+/* Read the case. Files that would be written over it or over its table are refused. */
+th_status cli_read_case(const cli_arguments *arguments, th_case **out, th_error *err) TH_MUST_USE;
 
 /* Print a failure as one line on standard error; returns the exit code that goes with it. */
 int cli_failed(const th_error *err);
@@ -47,6 +62,16 @@ int cli_failed(const th_error *err);
 int cli_usage(const char *format, ...) TH_PRINTF(1, 2);
 
 /* ---- output.c ------------------------------------------------------------------------------- */
+
+/* Before any work: every output has a folder that can be written, is not a folder itself, and no
+ * two of them, nor their metadata, are one file. Links are followed: *place of the option becomes
+ * what the link leads to. */
+th_status cli_check_outputs(const char *command, cli_arguments *arguments,
+                            th_error *err) TH_MUST_USE;
+
+/* TH_EINVAL when an output of the command is this file. */
+th_status cli_check_input(const cli_arguments *arguments, const char *path,
+                          th_error *err) TH_MUST_USE;
 
 /* Start a table in a file, or on standard output when path is "-". */
 th_status cli_table(const char *path, const th_column *column, int columns, const char *title,

@@ -141,7 +141,8 @@ int cli_flow(int argc, char **argv)
 {
     const char *csv = NULL;
     const cli_option option[] = {
-        {"--csv", "FILE", "table x,density,speed,sound,potential; - for standard output", &csv},
+        {"--csv", "FILE", "table x,density,speed,sound,potential; - for standard output", &csv,
+         CLI_TABLE},
     };
     cli_arguments arguments;
     th_case *c = NULL;
@@ -153,7 +154,7 @@ int cli_flow(int argc, char **argv)
 
     if (code != CLI_DONE)
         return code < 0 ? CLI_DONE : code;
-    st = th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err);
+    st = cli_read_case(&arguments, &c, &err);
     if (st == TH_OK)
         st = th_flow_build(&c->setup, &flow, &err);
     if (st == TH_OK && csv != NULL)

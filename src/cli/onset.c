@@ -12,7 +12,7 @@
 
 #include "cli.h"
 
-/* Own columns of the table, after the axes. */
+/* Own columns of the table, after the axes: as many as start_table lists. */
 enum { OWN_COLUMNS = 6 };
 
 typedef struct {
@@ -318,14 +318,15 @@ int cli_onset(int argc, char **argv)
         {"--upto", "GAP",
          "search up to this length, with its unit in an SI case (default: the largest value of the "
          "axis of [sweep] over it, else 4 times the base value)",
-         &upto},
-        {"--orders", "N", "stop after the first N changes", &orders},
-        {"--samples", "N", "rings, walls: lengths looked at first (default 100)", &samples},
-        {"--threads", "N", "threads (default: one for each processor)", &threads},
+         &upto, CLI_PLAIN},
+        {"--orders", "N", "stop after the first N changes", &orders, CLI_PLAIN},
+        {"--samples", "N", "rings, walls: lengths looked at first (default 100)", &samples,
+         CLI_PLAIN},
+        {"--threads", "N", "threads (default: one for each processor)", &threads, CLI_PLAIN},
         {"--csv", "FILE",
          "table order,gap,gap_error,kind,change,omega_re, the axes of other keys "
          "before it; - for standard output",
-         &csv},
+         &csv, CLI_TABLE},
     };
     const long processors = sysconf(_SC_NPROCESSORS_ONLN);
     th_onset_options options = {0};
@@ -342,7 +343,7 @@ int cli_onset(int argc, char **argv)
 
     if (code != CLI_DONE)
         return code < 0 ? CLI_DONE : code;
-    st = th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err);
+    st = cli_read_case(&arguments, &c, &err);
     w.c = c;
     if (st == TH_OK)
         st = whole("--orders", orders, 1, 0, &options.orders, &err);

@@ -7,21 +7,33 @@
 
 #include "cli.h"
 
+/* One line, whatever words of the user it holds: control characters become \xHH. */
+static void complain(const char *text)
+{
+    fputs("twinhorizon: ", stderr);
+    for (; *text != '\0'; text++)
+        if ((unsigned char)*text < 0x20 || *text == 0x7f)
+            fprintf(stderr, "\\x%02x", (unsigned)(unsigned char)*text);
+        else
+            fputc(*text, stderr);
+    fputc('\n', stderr);
+}
+
 int cli_usage(const char *format, ...)
 {
+    char text[2 * sizeof((th_error *)0)->text];
     va_list args;
 
-    fputs("twinhorizon: ", stderr);
     va_start(args, format);
-    vfprintf(stderr, format, args);
+    (void)vsnprintf(text, sizeof text, format, args);
     va_end(args);
-    fputc('\n', stderr);
+    complain(text);
     return CLI_USAGE;
 }
 
 int cli_failed(const th_error *err)
 {
-    fprintf(stderr, "twinhorizon: %s\n", err->text);
+    complain(err->text);
     switch (err->status) {
     case TH_EINVAL:
     case TH_ECASE:
@@ -42,9 +54,12 @@ int cli_failed(const th_error *err)
 static void help(const char *command, const char *summary, const cli_option *option, int options)
 {
     printf("twinhorizon %s CASE [--set SECTION.KEY=VALUE]...", command);
-    for (int i = 0; i < options; i++)
-        printf(" [%s%s%s]", option[i].name, option[i].value != NULL ? " " : "",
-               option[i].value != NULL ? option[i].value : "");
+    for (int i = 0; i < options; i++) {
+        const bool needed = option[i].use == CLI_NEEDED;
+
+        printf(" %s%s%s%s%s", needed ? "" : "[", option[i].name, option[i].value != NULL ? " " : "",
+               option[i].value != NULL ? option[i].value : "", needed ? "" : "]");
+    }
     printf("\n\n%s\n\n", summary);
     printf("  %-22s %s\n", "--set SECTION.KEY=VALUE", "override or add a key of the case file");
     for (int i = 0; i < options; i++) {
@@ -67,6 +82,8 @@ static const cli_option *find(const char *name, const cli_option *option, int op
 int cli_read(const char *command, const char *summary, int argc, char **argv,
              const cli_option *option, int options, cli_arguments *out)
 {
+    th_error err = {0};
+
     memset(out, 0, sizeof *out);
     for (int i = 0; i < argc; i++) {
         const bool set = strcmp(argv[i], "--set") == 0;
@@ -102,5 +119,22 @@ int cli_read(const char *command, const char *summary, int argc, char **argv,
     if (out->case_path == NULL)
         return cli_usage("%s: a case file is wanted; twinhorizon %s --help tells more", command,
                          command);
-    return CLI_DONE;
+    for (int i = 0; i < options; i++) {
+        if (option[i].use == CLI_NEEDED && *option[i].place == NULL)
+            return cli_usage("%s: %s %s is wanted", command, option[i].name, option[i].value);
+        if (option[i].use >= CLI_FILE && *option[i].place != NULL)
+            out->output[out->outputs++] = &option[i];
+    }
+    return cli_check_outputs(command, out, &err) == TH_OK ? CLI_DONE : cli_failed(&err);
+}
+
+th_status cli_read_case(const cli_arguments *arguments, th_case **out, th_error *err)
+{
+    th_status st = cli_check_input(arguments, arguments->case_path, err);
+
+    if (st == TH_OK)
+        st = th_case_read(arguments->case_path, arguments->set, arguments->sets, out, err);
+    if (st == TH_OK && (*out)->data != NULL)
+        st = cli_check_input(arguments, th_data_path((*out)->data), err);
+    return st;
 }

@@ -104,14 +104,15 @@ static void print_notes(const cli_view *v, const th_flow *flow, const th_solutio
             "Certified   frequency up to %.4g%s, growth rate up to %.4g%s; worst phase step %.2f\n",
             s->census_re_max * v->frequency, v->hertz, s->census_im_max * v->rate, v->per_second,
             s->census_step);
-    printf("Listed      %s%.5g%s; each stands for its mirror image -omega* too%s\n",
+    printf("Listed      %s%.5g%s%s; each stands for its mirror image -omega* too%s\n",
            s->dense ? "modes up to frequency " : "growing modes only; band up to frequency ",
            s->omega_top * v->frequency, v->hertz,
+           open ? "" : ", beyond it growing ones and those of negative energy",
            open ? "" : ", growing ones for decaying partners");
     printf("Matrix      %d unknowns%s\n", s->unknowns,
            s->dense ? ""
-                    : ": too many for all eigenvalues, so the census found the modes and the "
-                      "matrix confirmed each");
+                    : ": too many for all eigenvalues; asked for the one next to each mode of "
+                      "the census");
     if (s->zero_modes > 0)
         printf("Note        %d zero modes of the ring (the free phase and its partner) recognised "
                "and set aside\n",
@@ -193,10 +194,14 @@ static th_status write_matrix(const th_case *c, const th_flow *flow, const char 
 {
     const th_solve_options options = {.accuracy = c->accuracy};
     cli_file file = {0};
+    th_error why;
     th_status st = cli_file_open(path, &file, err);
 
-    if (st == TH_OK)
-        st = th_matrix_write(flow, &options, c->setup.shape->name, file.stream, err);
+    if (st == TH_OK) {
+        st = th_matrix_write(flow, &options, c->setup.shape->name, file.stream, &why);
+        if (st != TH_OK)
+            st = th_fail(err, st, "%s: %s", path, why.text);
+    }
     if (st == TH_OK)
         st = cli_file_finish(&file, err);
     cli_file_abandon(&file);
@@ -218,13 +223,14 @@ int cli_solve(int argc, char **argv)
 {
     const char *csv = NULL, *modes = NULL, *matrix = NULL, *sensitivity = NULL;
     const cli_option option[] = {
-        {"--csv", "FILE", "table of the modes; - for standard output", &csv},
-        {"--modes", "FILE.h5", "shapes of the modes along the flow, HDF5", &modes},
+        {"--csv", "FILE", "table of the modes; - for standard output", &csv, CLI_TABLE},
+        {"--modes", "FILE.h5", "shapes of the modes along the flow, HDF5", &modes, CLI_FILE},
         {"--matrix", "FILE.mtx",
          "the matrix A in Matrix Market form; omega = i eigenvalue, "
          "reduced units",
-         &matrix},
-        {"--sensitivity", NULL, "also print d omega/d key of every growing mode", &sensitivity},
+         &matrix, CLI_FILE},
+        {"--sensitivity", NULL, "also print d omega/d key of every growing mode", &sensitivity,
+         CLI_PLAIN},
     };
     cli_arguments arguments;
     th_case *c = NULL;
@@ -242,7 +248,7 @@ int cli_solve(int argc, char **argv)
     only_table = csv != NULL && strcmp(csv, "-") == 0;
     if (only_table && sensitivity != NULL)
         return cli_usage("solve: --csv - leaves no room on standard output for --sensitivity");
-    st = th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err);
+    st = cli_read_case(&arguments, &c, &err);
     if (st == TH_OK)
         st = th_flow_build(&c->setup, &flow, &err);
     if (st == TH_OK && matrix != NULL)

@@ -136,10 +136,12 @@ int cli_sweep(int argc, char **argv)
 {
     const char *folder = NULL, *threads = NULL, *resume = NULL, *part = NULL;
     const cli_option option[] = {
-        {"--out", "DIR", "folder for the journal and the tables; made when missing", &folder},
-        {"--threads", "N", "threads; default: one for each processor", &threads},
-        {"--resume", NULL, "go on with an interrupted sweep", &resume},
-        {"--part", "K/N", "only the K-th of N shares of the points, for batch systems", &part},
+        {"--out", "DIR", "folder for the journal and the tables; made when missing", &folder,
+         CLI_NEEDED},
+        {"--threads", "N", "threads; default: one for each processor", &threads, CLI_PLAIN},
+        {"--resume", NULL, "go on with an interrupted sweep", &resume, CLI_PLAIN},
+        {"--part", "K/N", "only the K-th of N shares of the points, for batch systems", &part,
+         CLI_PLAIN},
     };
     th_sweep_options o = {.part = 1, .parts = 1, .stop = &stop};
     cli_arguments arguments;
@@ -155,14 +157,12 @@ int cli_sweep(int argc, char **argv)
     o.threads = (int)sysconf(_SC_NPROCESSORS_ONLN);
     if (o.threads < 1)
         o.threads = 1;
-    if (folder == NULL)
-        return cli_usage("sweep: --out DIR is wanted");
     if (threads != NULL && !read_threads(threads, &o.threads))
         return cli_usage("sweep: --threads %s: want a whole number from 1 to 1024", threads);
     if (part != NULL && !read_part(part, &o.part, &o.parts))
         return cli_usage("sweep: --part %s: want K/N with 1 <= K <= N", part);
     path = cli_join(folder, "journal");
-    st = path != NULL ? th_case_read(arguments.case_path, arguments.set, arguments.sets, &c, &err)
+    st = path != NULL ? cli_read_case(&arguments, &c, &err)
                       : th_fail(&err, TH_ENOMEM, "sweep: the name of the journal");
     if (st == TH_OK && cli_rank() > 0)
         st = cli_ranks_sweep(c, &o, NULL, &err);

@@ -53,8 +53,11 @@ th_status cli_make_folder(const char *folder, th_error *err)
 
     if (mkdir(folder, 0777) == 0)
         return TH_OK;
-    if (errno == EEXIST && stat(folder, &is) == 0 && S_ISDIR(is.st_mode))
-        return TH_OK;
+    if (errno == EEXIST && stat(folder, &is) == 0) {
+        if (S_ISDIR(is.st_mode))
+            return TH_OK;
+        return th_fail(err, TH_EIO, "%s: a file, want a folder", folder);
+    }
     return th_fail(err, TH_EIO, "%s: the folder cannot be made (%s)", folder, strerror(errno));
 }
 

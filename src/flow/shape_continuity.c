@@ -15,8 +15,6 @@
 
 #include <gsl/gsl_math.h>
 
-#include "../alloc.h"
-
 /* Halvings of a bracket: to the last bit of a double, whatever its start. */
 enum { HALVINGS = 200 };
 
@@ -147,7 +145,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     th_status st = TH_EBUG;
     th_error inner = {0};
     th_feature feature[2];
-    th_flow_spec spec = {.eval = eval, .release = free, .scattering = value[SCATTERING_LENGTH]};
+    th_flow_spec spec = {.eval = eval, .scattering = value[SCATTERING_LENGTH]};
     river *r = NULL;
     double v_u = value[SPEED_UPSTREAM], v_d = value[SPEED_DOWNSTREAM];
 
@@ -156,7 +154,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
         st = check_ring(setup, err);
     if (st != TH_OK)
         return st;
-    r = th_alloc(1, sizeof *r);
+    r = th_take(setup->workspace, 1, sizeof *r);
     if (r == NULL)
         return th_fail(err, TH_ENOMEM, "shape continuity: its parameters");
     if (ring)
@@ -177,7 +175,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
         goto done;
     th_edges_spec(&r->v, &spec, feature);
     spec.ctx = r;
-    st = th_flow_create(&spec, &setup->ends, out, &inner);
+    st = th_shape_flow(setup, &spec, out, &inner);
     if (st == TH_OK)
         r = NULL;                                     /* the flow owns it */
     else if (st == TH_EINVAL && inner.key[0] == '\0') /* the one rule not checked above: v > 0 */
@@ -188,7 +186,7 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     else if (err != NULL)
         *err = inner;
 done:
-    free(r);
+    th_give(setup->workspace, r);
     return st;
 }
 

@@ -6,7 +6,7 @@
  *
  * To add a shape: (1) copy shape_sech.c to shape_NAME.c and write its keys, checks and formulas;
  * (2) declare th_shape_NAME in shapes.h; (3) add it to the table below; (4) add its closed forms to
- * tests/test_flow.c. The case reader and the manual pages read the table.
+ * tests/test_flow.c. The case reader reads the table.
  * Proved by tests/test_flow.c. */
 #include "shapes.h"
 

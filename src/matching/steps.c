@@ -29,8 +29,8 @@ static const double usual_kh = 3.0, fine_kh = 2.0;
  * e^20 of cancellation leaves seven. */
 static const double far_kh = 10.0;
 
-/* Steps of a flow at most, equal ones of uniform pieces counted each. Measured on step pockets: 130
- * (400 healing lengths, 220 growing modes) take 5 s to certify, and time goes with the square. */
+/* Steps of a flow at most, equal ones of uniform pieces counted each. Measured on step pockets: gap
+ * 400 (600 upstream healing lengths, 220 growing modes) takes 5 s to certify. */
 enum { STEPS_MAX = 500 };
 
 typedef struct {
@@ -203,7 +203,8 @@ static th_status cut(cutter *c, int piece, double left, double right, th_error *
         if (st == TH_OK && c->total > STEPS_MAX)
             return th_fail(err, TH_EUNDECIDED,
                            "matching: the flow is too long for its shortest waves, which need more "
-                           "than %d steps",
+                           "than %d steps; a shorter pocket, narrower edges or lower sound speeds "
+                           "need fewer",
                            STEPS_MAX);
         if (st == TH_OK)
             st = push(c->out, &step, err);

@@ -285,10 +285,6 @@ static void doubt(const th_solver *w, char *reason, size_t size)
     else if (th_solver_conserving(w) && s->census_known && w->neutral != w->census.neutral)
         (void)snprintf(reason, size, "the matrix has %d neutral modes, the census counts %d",
                        w->neutral, w->census.neutral);
-    else if (w->unmatched > 0 && !s->census_known)
-        (void)snprintf(reason, size,
-                       "%d growing eigenvalues of the first matrix are not found in the second",
-                       w->unmatched);
 }
 
 void th_certify_decide(th_solver *w)

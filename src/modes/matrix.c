@@ -105,7 +105,6 @@ static th_status examine(th_solver *w, double complex omega, th_error *err)
     if (st == TH_OK)
         apart = cabs(coarse.omega - fine.omega);
     if (st == TH_ECONVERGE || (st == TH_OK && !(apart <= same_mode * cabs(fine.omega)))) {
-        w->unmatched += cimag(omega) > same_mode * w->s->omega_top;
         st = TH_OK;
     } else if (st == TH_OK) {
         mode.omega_re = creal(fine.omega);
@@ -145,7 +144,7 @@ th_status th_matrix_modes(th_solver *w, double omega_low, th_error *err)
     th_status st = TH_OK;
 
     s->count = 0;
-    w->unmatched = w->neutral = 0;
+    w->neutral = 0;
     for (int i = 0; st == TH_OK && i < TH_LEVELS; i++) {
         th_level_clear(&w->level[i]);
         st = th_level_create(w->flow, (th_level_kind)i, w->options->accuracy, s->omega_top,

@@ -2,14 +2,14 @@
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
  * A mode to the last digits. In: two grains of the matching function, a start. Out: root and error
- * bar. Calls matching. Proof: tests/check_precision.py (30-digit roots lie within the bars). */
+ * bar. Calls matching. Proof: tests/check_precision.py (20-digit roots lie within the bars). */
 #include "modes/polish.h"
 
 #include <float.h>
 #include <math.h>
 
 /* Rounding of the root, in units of the largest frequency at hand. Measured on 320 growing modes of
- * random flows against 30-digit roots (tests/check_precision.py --random): up to 14. */
+ * random flows against 20-digit roots (tests/check_precision.py --random): up to 14. */
 static const double rounding = 32.0 * DBL_EPSILON;
 
 th_status th_polish(const th_matching *usual, const th_matching *fine, double scale,

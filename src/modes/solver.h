@@ -18,7 +18,6 @@ typedef struct {
     th_solution *s;
     int room;                  /* capacity of s->mode */
     th_level level[TH_LEVELS]; /* matrix.c */
-    int unmatched;             /* growing candidates that the check level did not confirm */
     int neutral;               /* rings, walls: dense eigenvalues in the census' strip */
     th_matching *usual, *fine;
     th_census census;

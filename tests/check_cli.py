@@ -1,0 +1,97 @@
+#!/usr/bin/python3
+# twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+# SPDX-License-Identifier: GPL-3.0-or-later
+"""Command lines that would lose a file, and where the program may write: check_cli.py PROGRAM
+prints TAP. Each wrong call gives one line on standard error, exit code 2 and leaves the files alone."""
+import os
+import subprocess
+import sys
+import tempfile
+
+PROGRAM = os.path.abspath(sys.argv[1])
+CASE = """[units]
+system = reduced
+[flow]
+shape = step
+speed = 1
+sound_upstream = 1.5
+sound_pocket = 0.5
+sound_downstream = 1.5
+gap = 2
+"""
+count = bad = 0
+
+
+def check(good, name, detail=""):
+    global count, bad
+    count += 1
+    bad += not good
+    print(f"{'ok' if good else 'not ok'} {count} - {name}" + ("" if good else f" # {detail}"))
+
+
+def run(*words):
+    return subprocess.run([PROGRAM, *words], capture_output=True, text=True, check=False)
+
+
+def files():
+    return {name: open(name, "rb").read() for name in os.listdir(".") if os.path.isfile(name)}
+
+
+def refused(want, *words):
+    before = files()
+    done = run(*words)
+    good = (done.returncode == 2 and done.stderr.count("\n") == 1 and want in done.stderr
+            and done.stdout == "" and files() == before)
+    check(good, " ".join(words).encode("unicode_escape").decode(), repr(done.stderr))
+
+
+def main():
+    with open("my.ini", "w", encoding="ascii") as file:
+        file.write(CASE)
+    os.mkdir("folder")
+    os.link("my.ini", "hard.csv")
+    os.symlink("my.ini", "soft.csv")
+    os.symlink("nothing", "dangling.csv")
+    refused("would be one file", "solve", "my.ini", "--csv", "same", "--matrix", "same")
+    refused("would be one file", "solve", "my.ini", "--csv", "./x", "--modes", "folder/../x")
+    refused("would be one file", "solve", "my.ini", "--csv", "x", "--modes", "x-metadata.json")
+    refused("would be one file", "solve", "my.ini", "--matrix", "x-metadata.json", "--csv", "x")
+    refused("would write over my.ini", "solve", "my.ini", "--csv", "my.ini")
+    refused("would write over", "flow", "./my.ini", "--csv", "folder/../my.ini")
+    refused("would write over my.ini", "onset", "my.ini", "--csv", "hard.csv")
+    refused("would write over my.ini", "solve", "my.ini", "--matrix", "soft.csv")
+    os.rename("my.ini", "c-metadata.json")
+    refused("would write over c-metadata.json", "flow", "c-metadata.json", "--csv", "c")
+    os.rename("c-metadata.json", "my.ini")
+    refused("a link that leads to no file", "solve", "my.ini", "--csv", "dangling.csv")
+    refused("standard output", "solve", "my.ini", "--modes", "-")
+    refused("standard output", "solve", "my.ini", "--matrix", "-")
+    refused("its folder cannot be written", "solve", "my.ini", "--csv", "no/x")
+    refused("a folder, give a file", "solve", "my.ini", "--csv", "folder")
+    refused("a name of 0 bytes", "solve", "my.ini", "--csv", "")
+    refused("/dev/full: matrix", "solve", "my.ini", "--matrix", "/dev/full")
+    refused("so\\x0alve", "so\nlve", "my.ini")
+    refused("--c\\x0asv", "solve", "my.ini", "--c\nsv", "x")
+    refused("my.ini: a file, want a folder", "sweep", "my.ini", "--set", "sweep.gap=1,2", "--out",
+            "my.ini")
+    refused("--out DIR is wanted", "sweep", "my.ini")
+    usage = run("sweep", "--help").stdout.splitlines()[0]
+    check(" --out DIR " in usage and "[--out" not in usage, "help shows what is needed", usage)
+    # a link is followed: the link stays, what it leads to is written whole
+    os.symlink("real.csv", "link.csv")
+    open("real.csv", "w", encoding="ascii").close()
+    done = run("solve", "my.ini", "--csv", "link.csv")
+    check(done.returncode == 0 and os.path.islink("link.csv")
+          and open("real.csv", encoding="ascii").read().startswith("mode,label"), "a link is followed",
+          done.stderr)
+    done = run("solve", "my.ini", "--csv", "/dev/null", "--matrix", "/dev/null")
+    check(done.returncode == 0, "a device takes two outputs", done.stderr)
+    print(f"1..{count}")
+    return bad > 0
+
+
+with tempfile.TemporaryDirectory() as folder:
+    os.chdir(folder)
+    code = main()
+    os.chdir("/")
+sys.exit(code)
