@@ -21,10 +21,11 @@ units:    alloc status
 table:    csv units version
 dispersion: units
 data:     units io_error
+gll:      status
 workspace: alloc status
-flow:     data workspace
+flow:     data workspace gll
 case:     flow buffer
-mesh:     flow dispersion
+mesh:     flow dispersion gll
 lapack:   alloc status
 operator: mesh lapack buffer
 spectrum: operator

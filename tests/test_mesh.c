@@ -13,7 +13,7 @@
 
 #include "dispersion.h"
 #include "flows.h"
-#include "mesh/gll.h"
+#include "gll.h"
 #include "mesh/mesh.h"
 
 /* ---- Gauss-Lobatto-Legendre rules ----------------------------------------------------------- */

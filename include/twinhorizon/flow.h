@@ -65,10 +65,14 @@ typedef struct {
     const bool *uniform;       /* [pieces] n, v, c constant on the piece; NULL: none is */
     int features;              /* >= 0 */
     const th_feature *feature; /* [features] */
+    const char *note;          /* NULL, or what a user should know of how the flow was found
+                                  (copied); longer than TH_FLOW_NOTE_MAX it is cut */
     double scattering; /* equation of state: 0 contact, c^2 = g n; > 0 transverse ground state
                           of that scattering length, mu = omega_perp sqrt(1 + 4 a n). Only
                           the potential depends on it. */
 } th_flow_spec;
+
+enum { TH_FLOW_NOTE_MAX = 800 };
 
 typedef struct th_flow th_flow;
 
@@ -131,6 +135,7 @@ th_ends th_flow_ends(const th_flow *flow);
 double th_flow_flux(const th_flow *flow);                            /* J = n v */
 const th_horizon *th_flow_horizons(const th_flow *flow, int *count); /* ascending x */
 const th_pocket *th_flow_pockets(const th_flow *flow, int *count);   /* ascending x */
+const char *th_flow_note(const th_flow *flow);  /* of th_flow_spec; "" when it had none */
 double th_flow_scattering(const th_flow *flow); /* of th_flow_spec; 0 contact */
 double th_flow_sound_max(const th_flow *flow);  /* largest c, the scale of speeds */
 

@@ -172,6 +172,8 @@ void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
             printf(" %.6g", edge[i] * v.length);
         printf("%s\n", v.micrometres);
     }
+    if (*th_flow_note(flow) != '\0')
+        printf("Found       %s\n", th_flow_note(flow));
     print_horizons(&v, flow);
     print_pockets(&v, flow);
 }

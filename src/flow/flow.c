@@ -12,6 +12,7 @@
 #include "inside.h"
 
 #include <gsl/gsl_math.h>
+#include <stdio.h>
 #include <string.h>
 
 /* n v may vary by this much, relatively: callbacks that interpolate measured data reach it easily
@@ -232,6 +233,8 @@ th_status th_flow_create_in(const th_flow_spec *spec, const th_ends *ends, th_wo
     flow->eval = spec->eval;
     flow->ctx = spec->ctx;
     flow->scattering = spec->scattering;
+    if (spec->note != NULL)
+        (void)snprintf(flow->note, sizeof flow->note, "%s", spec->note);
     st = copy_pieces(flow, spec, err);
     if (st != TH_OK)
         goto done;
@@ -337,6 +340,11 @@ const th_pocket *th_flow_pockets(const th_flow *flow, int *count)
 {
     *count = flow->pockets;
     return flow->pocket;
+}
+
+const char *th_flow_note(const th_flow *flow)
+{
+    return flow->note;
 }
 
 double th_flow_scattering(const th_flow *flow)

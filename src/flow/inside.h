@@ -24,8 +24,9 @@ struct th_flow {
     th_feature *feature;  /* [features] */
     th_flow_point end[2]; /* uniform states outside, left and right; unused on a ring */
     double flux;          /* J = n v */
-    double scattering;    /* a of the transverse equation of state; 0 contact */
-    double mu;            /* chemical potential that makes the potential 0 at edge[0] */
+    char note[TH_FLOW_NOTE_MAX];
+    double scattering; /* a of the transverse equation of state; 0 contact */
+    double mu;         /* chemical potential that makes the potential 0 at edge[0] */
     double sound_max;
     int horizons;
     th_horizon *horizon; /* [horizons] */

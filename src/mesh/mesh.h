@@ -8,7 +8,7 @@
 
 #include <complex.h>
 #include <stdbool.h>
-#include "mesh/gll.h"
+#include "gll.h"
 #include "twinhorizon/flow.h"
 #include "twinhorizon/status.h"
 

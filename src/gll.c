@@ -4,7 +4,7 @@
  * Gauss-Lobatto-Legendre rules: the nodes are +-1 and the zeros of P'_p. In: the order p. Out:
  * nodes, weights, derivative matrix, transform to Legendre coefficients. Calls nobody.
  * Symbols: p order, z node, P_p Legendre polynomial. Proof: tests/test_mesh.c. */
-#include "mesh/gll.h"
+#include "gll.h"
 
 #include <gsl/gsl_math.h>
 #include <stddef.h>
