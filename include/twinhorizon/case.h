@@ -59,7 +59,8 @@ typedef struct {
 typedef struct {
     char *path; /* as given */
     char *text; /* the case in canonical form: every key in force, one a line, with
-                   overrides applied; embedded in metadata */
+                   overrides applied; embedded in metadata. Of a table it holds the file's
+                   name without folders, and how many rows with which hash */
     th_scale scale;
     th_flow_setup setup; /* base configuration, checked: th_flow_build succeeds */
     th_data *data;       /* the table that a key of the shape names, in reduced units; or NULL */

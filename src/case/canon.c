@@ -32,18 +32,29 @@ static int rank(const th_shape *shape, const th_case_entry *entry)
     return TH_KEYS + th_shape_key_find(shape, key);
 }
 
-/* Write one entry; a long list goes on in further lines, broken after commas. */
-static void write_entry(th_buffer *text, const th_case_entry *entry)
+/* The value of an entry as it is written: of a table its name alone, since a case and its table go
+ * together. */
+static const char *value_of(const th_shape *shape, const th_case_entry *entry)
 {
+    const int k = th_shape_key_find(shape, entry->key);
+    const char *slash = strrchr(entry->value, '/');
+
+    return k >= 0 && shape->key[k].file && slash != NULL ? slash + 1 : entry->value;
+}
+
+/* Write one entry; a long list goes on in further lines, broken after commas. */
+static void write_entry(th_buffer *text, const th_shape *shape, const th_case_entry *entry)
+{
+    const char *value = value_of(shape, entry);
     size_t line = text->length; /* where the current line begins */
 
     th_buffer_text(text, entry->key);
     th_buffer_text(text, " =");
-    for (const char *p = entry->value; *p != '\0';) {
+    for (const char *p = value; *p != '\0';) {
         size_t length = strcspn(p, ",");
 
         length += p[length] == ',';
-        if (p > entry->value && text->length - line + 1 + length > COLUMNS) {
+        if (p > value && text->length - line + 1 + length > COLUMNS) {
             th_buffer_text(text, "\n   ");
             line = text->length - 3;
         }
@@ -98,7 +109,7 @@ static void write_section(th_buffer *text, const th_case_source *source, const t
             if (strcmp(source->entry[i].section, name) != 0 ||
                 rank(shape, &source->entry[i]) != next)
                 continue;
-            write_entry(text, &source->entry[i]);
+            write_entry(text, shape, &source->entry[i]);
         }
         last = next;
     } while (next >= 0);

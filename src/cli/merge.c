@@ -12,6 +12,7 @@
 typedef struct {
     th_journal **journal; /* [count] */
     int count;
+    char *first; /* the first journal's path: the case's table lies beside it */
     long points;
     const char *text; /* the case, from the first journal */
 } parts;
@@ -36,7 +37,10 @@ static th_status open_one(parts *p, const char *folder, th_error *err)
     if (path == NULL)
         return th_fail(err, TH_ENOMEM, "merge: the name of a journal");
     st = th_journal_read_only(path, &p->journal[p->count], &points, &text, err);
-    free(path);
+    if (st == TH_OK && p->count == 0)
+        p->first = path;
+    else
+        free(path);
     if (st != TH_OK)
         return st;
     p->count++;
@@ -79,9 +83,14 @@ static int merge(parts *p, const char *folder)
     th_status st = check_complete(p, &err);
 
     if (st == TH_OK)
-        st = th_case_read_text("the case in the journal", p->text, NULL, 0, &c, &err);
+        st = th_case_read_text(p->first, p->text, NULL, 0, &c, &err);
+    if (st == TH_OK && strcmp(c->text, p->text) != 0)
+        st = th_fail(&err, TH_EINVAL, "merge: the table beside %s is not the one that was swept",
+                     p->first);
     if (st == TH_OK)
         st = cli_make_folder(folder, &err);
+    if (st == TH_OK)
+        st = cli_keep_table(c, folder, &err);
     if (st == TH_OK)
         st = cli_write_tables(c, p->points, &source, folder, &counts, &err);
     code = st == TH_OK ? cli_report_tables(&counts, folder) : cli_failed(&err);
@@ -136,5 +145,6 @@ int cli_merge(int argc, char **argv)
         if (th_journal_close(p.journal[i], &err) != TH_OK && code == CLI_DONE)
             code = cli_failed(&err);
     free(p.journal);
+    free(p.first);
     return code;
 }

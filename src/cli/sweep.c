@@ -107,6 +107,11 @@ static th_status run(const th_case *c, th_sweep_options o, bool resume, const ch
         st = cli_make_folder(folder, err);
     if (st == TH_OK)
         st = th_journal_open(path, c, points, resume, &journal, err);
+    if (st == TH_OK) {
+        st = cli_keep_table(c, folder, err);
+        if (st != TH_OK)
+            closed = th_journal_close(journal, NULL);
+    }
     if (st != TH_OK) {
         cli_ranks_dismiss();
         return st;
