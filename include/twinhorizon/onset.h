@@ -69,13 +69,13 @@ double th_onset_upto(const th_case *c);
  * decaying solutions (see index.h) reaches order x pi, is bracketed there and refined by secants;
  * even orders add a purely growing mode, odd ones make a pair of the slowest. Searched from
  * 1e-9 of the shortest healing length on (of upto if that is less), up to 1e6 healing lengths and
- * 100000 changes.
- * Rings and walls: two neutral modes of opposite energy collide on the real axis, or a mode and its
- * mirror image at omega = 0. Neighbouring samples whose certified modes differ in their counts or
- * in the order of their energies are bisected until a circle isolates the two modes; the square of
- * their difference, from the argument principle on the matching function, is analytic in the length
- * and zero at the collision. Searched between the first and the last sample for which the flow
- * exists.
+ * 100000 changes. Where the shape makes no flow so short: from the shortest that it makes
+ * (out->from). Rings and walls: two neutral modes of opposite energy collide on the real axis, or a
+ * mode and its mirror image at omega = 0. Neighbouring samples whose certified modes differ in
+ * their counts or in the order of their energies are bisected until a circle isolates the two
+ * modes; the square of their difference, from the argument principle on the matching function, is
+ * analytic in the length and zero at the collision. Searched between the first and the last sample
+ * for which the flow exists.
  *
  * @param[in]  setup    the value of the length key does not matter
  * @param[in]  options  upto must be given

@@ -123,10 +123,14 @@ th_status th_plateau_find(th_trap *trap, const th_upstream *up, const th_gll *ru
         return TH_OK;
     }
     th_stationary_clear(&now);
-    if (st == TH_ENONE)
+    if (st == TH_ENONE && good > 0)
         st = th_fail_key(err, TH_EINVAL, "width",
                          "width = %.6g: no depth makes a supersonic plateau; edges narrower than "
                          "about %.4g do",
                          target, good);
+    else if (st == TH_ENONE)
+        st = th_fail_key(err, TH_EINVAL, "gap",
+                         "gap = %.6g: no depth makes a supersonic plateau in so short a pocket",
+                         2 * trap->half);
     return st;
 }

@@ -25,6 +25,8 @@
 /* Longest search, in shortest healing lengths: a thousand times the longest condensate. Angles are
  * then good to nine digits still. */
 #define LONGEST 1e6
+/* The shortest length at which a shape makes a flow is found to this part of it. */
+#define SHORTEST 1e-3
 /* Most changes that are listed: hours of work, and more than anyone reads. */
 enum { CHANGES_MAX = 100000 };
 /* A root is found when the next step is below this part of its length; the step is made still, and
@@ -88,6 +90,27 @@ static th_status measure(const search *w, double x, sample *out, th_error *err)
     *out = (sample){.x = x, .error = index.error};
     out->angle = index.margin + M_PI * (index.count - (index.margin > index.error ? 1 : 0));
     return TH_OK;
+}
+
+/* Where the shape makes no flow of length `low`: the shortest that it makes, to
+ * SHORTEST, by halving on a logarithmic scale. */
+static th_status shortest(const search *w, double low, double high, sample *out, th_error *err)
+{
+    th_error ignored;
+    th_status st = measure(w, high, out, err);
+
+    while (st == TH_OK && high > (1 + SHORTEST) * low) {
+        const double middle = sqrt(low * high);
+        const th_status there = measure(w, middle, out, &ignored);
+
+        if (there == TH_OK)
+            high = middle;
+        else if (there == TH_EINVAL || there == TH_ECONVERGE)
+            low = middle;
+        else
+            return th_fail(err, there, "%s", ignored.text);
+    }
+    return st == TH_OK ? measure(w, high, out, err) : st;
 }
 
 /* Orders below the angle: the growing modes there. */
@@ -221,8 +244,11 @@ th_status th_onset_open(const th_flow_setup *setup, const th_onset_options *opti
     int last;
     th_status st = choose_start(&w, options->upto, &start, err);
 
-    if (st == TH_OK)
-        st = measure(&w, start, &low, err);
+    if (st != TH_OK)
+        return st;
+    st = measure(&w, start, &low, err);
+    if (st == TH_EINVAL || st == TH_ECONVERGE)
+        st = shortest(&w, start, options->upto, &low, err);
     if (st == TH_OK)
         st = measure(&w, options->upto, &top, err);
     if (st != TH_OK)
