@@ -22,6 +22,8 @@
 #define WINDING_TOLERANCE 1e-9
 /* The edges must span the circumference to this much, relatively: a few roundings of a decimal. */
 #define CIRCUMFERENCE_TOLERANCE 1e-12
+/* Padding of walls, in shortest healing lengths: an element so thin would spoil all others. */
+#define THINNEST_PADDING 1e-3
 /* A state outside counts as uniform when its relative slope per healing length (and curvature per
  * healing length squared) is below this. A tail that decays like exp(-2 x/w) with w a few healing
  * lengths then misses its limit by about 1e-10, below the nine digits promised elsewhere. */
@@ -132,9 +134,10 @@ static th_status read_end(th_flow *flow, const th_flow_spec *spec, int side, th_
     return TH_OK;
 }
 
+/* Numbers whose squares and products are finite and not zero. */
 static bool positive(double x)
 {
-    return x > 0 && isfinite(x);
+    return x > 1e-75 && x < 1e75;
 }
 
 static th_status check_samples(const th_flow *flow, const th_flow_sample *sample, int count,
@@ -145,7 +148,7 @@ static th_status check_samples(const th_flow *flow, const th_flow_sample *sample
 
         if (!positive(p->n) || !positive(p->v) || !positive(p->c))
             return th_fail(err, TH_EINVAL,
-                           "flow: n = %g, v = %g, c = %g at x = %.9g, want all finite and > 0",
+                           "flow: n = %g, v = %g, c = %g at x = %.9g, want all > 1e-75 and < 1e75",
                            p->n, p->v, p->c, sample[i].x);
         if (!isfinite(p->dn) || !isfinite(p->ddn) || !isfinite(p->dv) || !isfinite(p->dc))
             return th_fail(err, TH_EINVAL, "flow: a derivative at x = %.9g is not finite",
@@ -257,6 +260,14 @@ th_status th_flow_create_in(const th_flow_spec *spec, const th_ends *ends, th_wo
     }
     flow->mu = bernoulli(flow, &sample[0].point);
     flow->sound_max = largest_sound(flow, sample, count);
+    if (flow->shift > 0 && ends->padding * flow->sound_max < THINNEST_PADDING) {
+        st =
+            th_fail_key(err, TH_EINVAL, "padding",
+                        "padding = %.15g is less than %g of the shortest healing length, want 0 or "
+                        "more than that",
+                        ends->padding, THINNEST_PADDING);
+        goto done;
+    }
     st = th_flow_find_horizons(flow, sample, count, err);
     if (st != TH_OK)
         goto done;

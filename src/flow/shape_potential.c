@@ -20,6 +20,11 @@ enum { SOUND_UPSTREAM, MACH, PROFILE, GAP, WIDTH, DEPTH, TABLE, STATE, SCATTERIN
 
 /* Order of the elements: with the lengths of stationary.c exact to rounding. */
 enum { ORDER = 16 };
+/* Thinnest edge or barrier in upstream healing lengths: elements on it are then so short that
+ * slopes keep ten digits. */
+#define THINNEST 0.01
+/* A critical depth nearer to the one asked for than this is none: both are on its edge. */
+#define APART 1e-3
 /* A given depth of a flow with one edge is the one that makes a plateau to this, relatively. */
 #define SAME_DEPTH 1e-9
 /* The nearest depth with a supersonic pocket is looked for in steps of this factor, so many of
@@ -97,6 +102,10 @@ static th_status check_keys(const th_flow_setup *setup, th_error *err)
         return th_fail_key(err, TH_EINVAL, "file", "file is missing, profile = table needs it");
     if (!table && setup->data != NULL)
         return th_fail_key(err, TH_EINVAL, "file", "only profile = table reads a file");
+    if (setup->value[WIDTH] > 0 && setup->value[WIDTH] * setup->value[SOUND_UPSTREAM] < THINNEST)
+        return th_fail_key(err, TH_EINVAL, "width",
+                           "width = %.15g is less than %g healing lengths; give 0 for a jump",
+                           setup->value[WIDTH], THINNEST);
     return th_state_check((int)setup->value[STATE], setup->value[SCATTERING_LENGTH], err);
 }
 
@@ -143,7 +152,9 @@ static th_status refuse(const solved *s, const th_upstream *up, double depth, co
 
     if (st != TH_OK)
         return st;
-    if (found > 0)
+    if (found > 0 && fabs(found - depth) < APART * depth)
+        (void)snprintf(near, sizeof near, "and it is too close to the limit of such flows");
+    else if (found > 0)
         (void)snprintf(near, sizeof near, "the nearest %s with one is %.6g",
                        table ? "multiple of the table" : "depth", found);
     return th_fail_key(err, TH_EINVAL, table ? "file" : "depth",

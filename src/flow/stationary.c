@@ -366,7 +366,7 @@ static th_status finish(th_stationary *s, th_error *err)
         for (int i = 0; i <= p; i++) {
             da[i] = 0;
             for (int j = 0; j <= p; j++)
-                da[i] += rule->slope[i][j] * s->a[e * p + j] / half;
+                da[i] += rule->slope[i][j] * (s->a[e * p + j] - s->a[e * p + i]) / half;
         }
         for (int side = -1; side <= 0; side++) {
             const double change =

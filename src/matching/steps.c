@@ -190,8 +190,11 @@ static th_status cut(cutter *c, int piece, double left, double right, th_error *
             length = allowed(c, x, length);
         while (st == TH_OK && !yes) {
             if (!(length > 64.0 * DBL_EPSILON * fmax(fabs(left), fabs(right))))
-                return th_fail(err, TH_ECONVERGE,
-                               "matching: the flow at x = %g varies too fast to be expanded", x);
+                return th_fail(
+                    err, TH_ECONVERGE,
+                    "matching: the flow at x = %g varies too fast to be expanded; an edge "
+                    "so narrow is a jump",
+                    x);
             last = right - x - length < 1e-9 * length;
             if (last)
                 length = right - x;
