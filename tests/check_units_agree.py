@@ -160,5 +160,46 @@ with tempfile.TemporaryDirectory() as folder:
         check("Hawking temperature", abs(float(temperature) / wanted - 1) < 5e-6,
               temperature, wanted)
 
+    # Flows whose density varies. Unit of speed: sound_upstream. The flow of a potential is solved for,
+    # so its frequencies carry the rounding of that: 1e-10 of the largest.
+    unit = constants.hbar / (MASS * 1.1e-3)  # length
+    rate = 1.1e-3 / unit
+    atom = "[units]\nsystem = SI\n[atom]\nmass = 38.9637 u\n[flow]\n"
+    plain = "[units]\nsystem = reduced\n[flow]\n"
+    dense = 5e7 * unit
+    pairs = {
+        "continuity": (
+            atom + "shape = continuity\nspeed_upstream = 0.6 mm/s\nspeed_pocket = 1.5 mm/s\n"
+            "speed_downstream = 0.5 mm/s\nsound_upstream = 1.1 mm/s\nwidth_black = 0.9 um\n"
+            "width_white = 1.2 um\ngap = 9 um\ndensity = 50 /um\nstate = transverse\n"
+            "scattering_length = 90 a0\n",
+            plain + f"shape = continuity\nspeed_upstream = {0.6 / 1.1!r}\n"
+            f"speed_pocket = {1.5 / 1.1!r}\nspeed_downstream = {0.5 / 1.1!r}\nsound_upstream = 1\n"
+            f"width_black = {0.9e-6 / unit!r}\nwidth_white = {1.2e-6 / unit!r}\n"
+            f"gap = {9e-6 / unit!r}\ndensity = {dense!r}\nstate = transverse\nscattering_length = "
+            f"{90 * constants.physical_constants['Bohr radius'][0] / unit!r}\n"),
+        "potential": (
+            atom + "shape = potential\nprofile = well\nsound_upstream = 1.1 mm/s\n"
+            "flux = 33000 /s\ndensity = 50 /um\ngap = 5 um\nwidth = 0.3 um\n"
+            "depth = 0.8 mm^2/s^2\n",
+            plain + f"shape = potential\nprofile = well\nflux = {33000 / rate!r}\n"
+            f"density = {dense!r}\ngap = {5e-6 / unit!r}\nwidth = {0.3e-6 / unit!r}\n"
+            f"depth = {0.8e-6 / 1.1e-3**2!r}\n"),
+    }
+    for name, texts in pairs.items():
+        rows = []
+        for text in texts:
+            path = os.path.join(folder, "pair.ini")
+            with open(path, "w", encoding="utf-8") as file:
+                file.write(text)
+            rows.append([complex(float(row["omega_re"]), float(row["omega_im"]))
+                         for row in table(run("solve", path, "--csv", "-"))
+                         if row["label"] == "unstable"])
+        largest = max(map(abs, rows[0]), default=0)
+        off = max((abs(a - b * rate) / largest for a, b in zip(*rows)), default=1)
+        check(f"{name}: growing modes in SI and reduced", len(rows[0]) == len(rows[1]) > 0
+              and off < 1e-10, off, len(rows[0]), len(rows[1]))
+        print(f"# {name}: largest relative difference {off:.1e}")
+
 print(f"1..{results}")
 sys.exit(failures > 0)

@@ -16,21 +16,21 @@
 #include "flows.h"
 #include "twinhorizon/modes.h"
 
-enum { C_U, M, PROFILE, GAP, WIDTH, DEPTH, TABLE, STATE, A, KEYS };
+enum { C_U, M, FLUX, PROFILE, GAP, WIDTH, DEPTH, TABLE, STATE, A, KEYS };
 enum { WELL, STEP, BARRIER, BARRIERS };
 
 /* Keys with value 0 (but c_u, mach, profile) are not given. */
 static th_flow_setup setup_of(int profile, double m, double gap, double width, double depth,
                               double a)
 {
-    const double value[KEYS] = {1, m, profile, gap, width, depth, 0, a > 0, a};
+    const double value[KEYS] = {1, m, 0, profile, gap, width, depth, 0, a > 0, a};
     th_flow_setup s = {.shape = th_shape_find("potential"), .density = 1.7, .ends = open_ends()};
 
     assert_non_null(s.shape);
     assert_int_equal(s.shape->keys, KEYS);
     for (int i = 0; i < KEYS; i++) {
         s.value[i] = value[i];
-        s.given[i] = i < GAP || (i != TABLE && value[i] != 0);
+        s.given[i] = i <= M || i == PROFILE || (i != TABLE && value[i] != 0);
     }
     return s;
 }
@@ -256,6 +256,27 @@ static void test_refused(void **state)
     refused(setup_of(WELL, 0.6, 0, 0.1, 0, 0), "gap", "missing");
     refused(setup_of(STEP, 0.6, 4, 0.1, 0, 0), "gap", "only the profiles");
     refused(setup_of(BARRIER, 0.6, 0, 0, 0, 0), "width", "a barrier wants > 0");
+    /* the flux says the same as the Mach number; not both, not none, not too much */
+    s = setup_of(WELL, 0.6, 4, 0.1, 0, 0);
+    s.given[M] = false;
+    refused(s, "mach", "needs it or flux");
+    s.given[FLUX] = true;
+    s.value[FLUX] = 1.7 * 0.6;
+    assert_int_equal(th_flow_build(&s, &flow, &err), TH_OK);
+    {
+        th_flow *by_mach = build(WELL, 0.6, 4, 0.1, 0, 0);
+
+        close_to("flux", th_flow_flux(flow), th_flow_flux(by_mach), 1e-15);
+        close_to("density", density(flow, 0), density(by_mach, 0), 1e-13);
+        th_flow_destroy(by_mach);
+    }
+    th_flow_destroy(flow);
+    s.value[FLUX] = 1.71;
+    refused(s, "flux", "supersonic");
+    s = setup_of(WELL, 0.6, 4, 0.1, 0, 0);
+    s.given[FLUX] = true;
+    s.value[FLUX] = 1;
+    refused(s, "flux", "both given");
     s = setup_of(WELL, 0.6, 4, 0.1, 0, 0);
     s.ends = ring(50, 3);
     refused(s, "kind", "cannot close on a ring");

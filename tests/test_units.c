@@ -161,7 +161,7 @@ static void test_quantities(void **state)
         {"6 m/s", TH_DIM_SPEED_SQUARED,
          "m/s is a unit of speed; a squared speed takes one of m^2/s^2, mm^2/s^2"},
         {"6 m", TH_DIM_TIME, "m is a unit of length; a time takes one of s, ms, us"},
-        {"6", TH_DIM_RATE, "the number has no unit; a rate takes one of Hz, kHz, /s, rad/s"},
+        {"6", TH_DIM_RATE, "the number has no unit; a rate takes one of Hz, kHz, /s, /ms, rad/s"},
         {"6 um", TH_DIM_LINE_DENSITY,
          "um is a unit of length; a line density takes one of /m, /mm, /um"},
         {"6 m^2/s^2", TH_DIM_ENERGY,

@@ -16,7 +16,19 @@
 #include "plateau.h"
 #include "shapes.h"
 
-enum { SOUND_UPSTREAM, MACH, PROFILE, GAP, WIDTH, DEPTH, TABLE, STATE, SCATTERING_LENGTH, KEYS };
+enum {
+    SOUND_UPSTREAM,
+    MACH,
+    FLUX,
+    PROFILE,
+    GAP,
+    WIDTH,
+    DEPTH,
+    TABLE,
+    STATE,
+    SCATTERING_LENGTH,
+    KEYS
+};
 
 /* Order of the elements: with the lengths of stationary.c exact to rounding. */
 enum { ORDER = 16 };
@@ -85,6 +97,16 @@ static th_status check_keys(const th_flow_setup *setup, th_error *err)
             err, TH_EINVAL, "kind",
             "shape potential has an upstream state of its own, so it cannot close on "
             "a ring");
+    if (setup->given[MACH] == setup->given[FLUX])
+        return th_fail_key(err, TH_EINVAL, setup->given[FLUX] ? "flux" : "mach",
+                           setup->given[FLUX]
+                               ? "flux and mach are both given, want one of them"
+                               : "mach is missing, shape potential needs it or flux");
+    if (setup->given[FLUX] && !(setup->value[FLUX] < setup->density * setup->value[SOUND_UPSTREAM]))
+        return th_fail_key(err, TH_EINVAL, "flux",
+                           "flux = %.15g makes the upstream state supersonic, want less than "
+                           "density x sound_upstream = %.15g",
+                           setup->value[FLUX], setup->density * setup->value[SOUND_UPSTREAM]);
     if (paired && !setup->given[GAP])
         return th_fail_key(err, TH_EINVAL, "gap", "gap is missing, profile = %s needs it",
                            th_trap_word[kind]);
@@ -274,7 +296,8 @@ static th_status build(const th_flow_setup *setup, th_flow **out, th_error *err)
     const th_upstream up = {.state = {.n_u = setup->density,
                                       .c_u = value[SOUND_UPSTREAM],
                                       .a = value[SCATTERING_LENGTH]},
-                            .v_u = value[MACH] * value[SOUND_UPSTREAM]};
+                            .v_u = setup->given[FLUX] ? value[FLUX] / setup->density
+                                                      : value[MACH] * value[SOUND_UPSTREAM]};
     char note[TH_FLOW_NOTE_MAX] = "";
     double edge[EDGES_MAX];
     bool uniform[EDGES_MAX];
@@ -321,7 +344,14 @@ const th_shape th_shape_potential = {
             [MACH] = {.key = "mach",
                       .dimension = TH_DIM_NUMBER,
                       .below = 1,
-                      .doc = "upstream Mach number"},
+                      .optional = true,
+                      .doc = "upstream Mach number; this or flux"},
+            [FLUX] = {.key = "flux",
+                      .dimension = TH_DIM_RATE,
+                      .below = HUGE_VAL,
+                      .optional = true,
+                      .absolute = true,
+                      .doc = "density times speed, in place of mach"},
             [PROFILE] = {.key = "profile",
                          .word = th_trap_word,
                          .doc = "form of the potential: well, step (down), barrier, barriers "

@@ -46,6 +46,7 @@ static const unit_row unit[] = {
     {"Hz", TH_DIM_RATE, FULL_ROT, true},
     {"kHz", TH_DIM_RATE, 1e3 * FULL_ROT, true},
     {"/s", TH_DIM_RATE, 1.0, true},
+    {"/ms", TH_DIM_RATE, 1e3, true},
     {"rad/s", TH_DIM_RATE, 1.0, true},
     {"1/s", TH_DIM_RATE, 1.0, false},
     {"/m", TH_DIM_LINE_DENSITY, 1.0, true},
