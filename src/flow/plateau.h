@@ -12,7 +12,8 @@
 /**
  * The depth (height of barriers) at which the supersonic pocket is a plateau, and the flow. Starts
  * from the sharp edge, where half a grey soliton meets the plateau, and widens it step by step.
- * @retval TH_EINVAL  no plateau forms: err->key is width, and the text says up to which one does, or gap
+ * @retval TH_EINVAL  no plateau forms: err->key is width, and the text says up to which one does,
+ * or gap
  */
 TH_MUST_USE th_status th_plateau_find(th_trap *trap, const th_upstream *up, const th_gll *rule,
                                       th_stationary *out, th_error *err);
