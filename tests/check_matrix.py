@@ -29,10 +29,18 @@ TANH = {"shape": "tanh", "speed": 1, "sound_upstream": 1.5, "sound_pocket": 0.5,
 RING = {"shape": "tanh", "sound_upstream": 1.4, "sound_pocket": 0.6, "sound_downstream": 1.4,
         "width_black": 0.5, "width_white": 0.5, "gap": 10}
 WELL = {"shape": "well", "mach": 0.6, "gap": 1.5}
+FAST = {"shape": "continuity", "speed_upstream": 0.6, "speed_pocket": 1.4, "speed_downstream": 0.5,
+        "sound_upstream": 1, "width_black": 0.5, "width_white": 0.7, "gap": 6}
+SHEETS = {"shape": "potential", "profile": "barriers", "mach": 0.5, "gap": 6, "width": 0.6,
+          "state": "transverse", "scattering_length": 0.4}
 CASES = {
     "step": (STEP, {"kind": "open"}),
     "tanh": (TANH, {"kind": "open"}),
     "well": (WELL, {"kind": "open"}),
+    "continuity": (FAST, {"kind": "open"}),
+    "continuity ring": ({**FAST, "speed_upstream": None, "speed_downstream": None},
+                        {"kind": "ring", "circumference": 40, "winding": 5}),
+    "potential": (SHEETS, {"kind": "open"}),
     "ring": (RING, {"kind": "ring", "circumference": 50, "winding": 8}),
     "walls": (STEP, {"kind": "walls", "padding": 12}),
 }
@@ -57,7 +65,7 @@ def skip(name, why):
 def write_case(path, flow, ends):
     with open(path, "w", encoding="utf-8") as file:
         file.write("[units]\nsystem = reduced\n[flow]\n")
-        file.writelines(f"{key} = {value}\n" for key, value in flow.items())
+        file.writelines(f"{key} = {value}\n" for key, value in flow.items() if value is not None)
         file.write("[ends]\n")
         file.writelines(f"{key} = {value}\n" for key, value in ends.items())
         file.write("[solve]\naccuracy = 1e-9\n")

@@ -137,6 +137,45 @@ for r in rows:
     off.append(abs(root - gap))
 check("tanh: as scipy to 1e-10", code == 0 and len(rows) == 4 and max(off) < 1e-10, off)
 
+
+# ---- the density varies: -(n eta')' + 4 n (c^2 - v^2) eta = 0 with n = 1/v, c^2 = c_u^2 v_u/v
+def varying_mismatch(gap, v_u, v_p, v_d, c_u, w_b, w_w):
+    v_h = (c_u**2 * v_u) ** (1 / 3)  # v = c
+    x_b = -gap / 2 - w_b * math.atanh((v_u + v_p - 2 * v_h) / (v_u - v_p))
+    x_w = gap / 2 + w_w * math.atanh((v_d + v_p - 2 * v_h) / (v_d - v_p))
+
+    def slope(x, y):
+        v = (v_p + (v_u - v_p) * (1 - math.tanh((x - x_b) / w_b)) / 2
+             + (v_d - v_p) * (1 + math.tanh((x - x_w) / w_w)) / 2)
+        return [y[1] * v, 4 / v * (c_u**2 * v_u / v - v * v) * y[0]]
+
+    ends = []
+    for start, v, sign in ((x_b - 18 * w_b, v_u, 1), (x_w + 18 * w_w, v_d, -1)):
+        k = 2 * math.sqrt(c_u**2 * v_u / v - v * v)
+        done = solve_ivp(slope, (start, 0), [1, sign * k / v], method="DOP853", rtol=1e-12,
+                         atol=1e-300)
+        ends.append(done.y[:, -1] / math.hypot(*done.y[:, -1]))
+    return ends[0][0] * ends[1][1] - ends[0][1] * ends[1][0]
+
+
+code, rows, err = table(case(reduced(
+    "continuity", speed_upstream=0.6, speed_pocket=1.4, speed_downstream=0.5, sound_upstream=1,
+    width_black=0.5, width_white=0.7, gap=2)), "--upto", "6")
+off = []
+for r in rows:
+    gap = float(r["gap"])
+    root = brentq(varying_mismatch, gap - 0.2, gap + 0.2, xtol=1e-13, rtol=1e-14,
+                  args=(0.6, 1.4, 0.5, 1, 0.5, 0.7))
+    off.append(abs(root - gap))
+check("continuity: as scipy to 1e-10", code == 0 and len(rows) >= 3 and max(off) < 1e-10, off, rows)
+
+# ---- a flow that is solved for: a sharp well of the depth that makes a plateau turns over at the
+# gaps j pi/(2 sqrt(1/m^2 - m^2)) of the exact one, the first modes growing at every gap
+code, rows, err = table(case(reduced("potential", profile="well", mach=0.6, gap=1)))
+want = [j * math.pi / (2 * math.sqrt(1 / 0.36 - 0.36)) for j in range(1, len(rows) + 1)]
+check("potential: as the exact well", code == 0 and len(rows) == 3
+      and all(abs(float(r["gap"]) - w) < 1e-11 for r, w in zip(rows, want)), rows, want, err)
+
 # ---- sech: the key is width, the column stays gap
 code, rows, err = table(case(reduced("sech", speed=1, sound_upstream=1.5, depth=2, width=2)))
 k, d = 2 * math.sqrt(1.25), 4 * 2 - 5
