@@ -126,7 +126,7 @@ th_status th_plateau_find(th_trap *trap, const th_upstream *up, const th_gll *ru
     if (st == TH_ENONE && good > 0)
         st = th_fail_key(err, TH_EINVAL, "width",
                          "width = %.6g: no depth makes a supersonic plateau; edges narrower than "
-                         "about %.4g do",
+                         "about %.2g do",
                          target, good);
     else if (st == TH_ENONE)
         st = th_fail_key(err, TH_EINVAL, "gap",

@@ -177,7 +177,7 @@ static th_status refuse(const solved *s, const th_upstream *up, double depth, co
     if (found > 0 && fabs(found - depth) < APART * depth)
         (void)snprintf(near, sizeof near, "and it is too close to the limit of such flows");
     else if (found > 0)
-        (void)snprintf(near, sizeof near, "the nearest %s with one is %.6g",
+        (void)snprintf(near, sizeof near, "the nearest %s with one is %.4g",
                        table ? "multiple of the table" : "depth", found);
     return th_fail_key(err, TH_EINVAL, table ? "file" : "depth",
                        "%s%.15g: no stationary flow is supersonic in the pocket (%d other%s), %s",
