@@ -147,6 +147,9 @@ static th_status read_name(reader *r, char *cell, int place, th_error *err)
     while (c < TH_DATA_COLUMNS && strcmp(cell, known[c].name) != 0)
         c++;
     th_quote(cell, shown, sizeof shown);
+    if (c == TH_DATA_COLUMNS && strpbrk(cell, ";\t") != NULL)
+        return th_fail(err, TH_EINVAL, "%s:%d: \"%s\": want commas between columns", r->shown,
+                       r->line, shown);
     if (c == TH_DATA_COLUMNS)
         return th_fail(
             err, TH_EINVAL,
@@ -227,8 +230,9 @@ static th_status read_numbers(reader *r, th_error *err)
         cells++;
     }
     if (cells != r->cells)
-        return th_fail(err, TH_EINVAL, "%s:%d: %d cells, the header has %d", r->shown, r->line,
-                       cells, r->cells);
+        return th_fail(err, TH_EINVAL, "%s:%d: %d cells, the header has %d%s", r->shown, r->line,
+                       cells, r->cells,
+                       cells == 2 * r->cells ? "; numbers take a decimal point, not a comma" : "");
     for (int c = 0; c < TH_DATA_COLUMNS; c++) {
         double value;
         th_error why;
@@ -309,7 +313,7 @@ static th_status check(const reader *r, th_error *err)
         return th_fail(err, TH_EINVAL, "%s: %d rows, want %d or more", r->shown, r->data->rows,
                        TH_DATA_ROWS_MIN);
     for (int i = 0; speed != NULL && i < r->data->rows; i++)
-        if (!(speed[i] * speed[0] > 0))
+        if (speed[i] == 0 || signbit(speed[i]) != signbit(speed[0]))
             return th_fail(err, TH_EINVAL,
                            "%s: row %d has speed %.15g and row 1 %.15g, want the same sign "
                            "everywhere and not zero",

@@ -46,8 +46,12 @@ def excess(n, mach, scattering):
     return omega * (np.sqrt(1 + 4 * scattering * n) - root_1) + kinetic
 
 
-def program(keys):
+def program(keys, table=None):
     with tempfile.TemporaryDirectory() as folder:
+        if table is not None:
+            with open(os.path.join(folder, "v.csv"), "w", encoding="ascii") as file:
+                file.write("# invented\nx,potential\n")
+                file.writelines(f"{x!r},{v!r}\n" for x, v in zip(*map(list, table)))
         path = os.path.join(folder, "case.ini")
         with open(path, "w", encoding="ascii") as file:
             file.write("[units]\nsystem = reduced\n[flow]\nshape = potential\n")
@@ -122,5 +126,26 @@ for profile, mach, gap, width, depth, scattering in CASES:
     inside = (x > other.x[0]) & (x < other.x[-1])
     off = np.max(np.abs(other.sol(x[inside])[0] ** 2 - n[inside]))
     check(other.success and off < 1e-8, name, f"density off by {off:.1e}")
+# The same potentials as tables: the flow of the formula, the better the closer the rows are.
+for profile, mach, gap, width, depth in (("well", 0.6, 4, 0.3, 0.7), ("barriers", 0.5, 6, 0.5, 0.3)):
+    formula, error = program({"profile": profile, "mach": mach, "gap": gap, "width": width,
+                              "depth": depth})
+    before = None
+    for spacing in (0.2, 0.1, 0.05) if profile == "well" else (0.1, 0.07, 0.05):
+        x = np.arange(-10, 10 + spacing / 2, spacing)
+        found, error = program({"profile": "table", "mach": mach, "file": "v.csv"},
+                               (x, depth * form(profile, x, gap, width)))
+        name = f"{profile} as a table with spacing {spacing}"
+        if found is None:
+            check(False, name, error)
+            continue
+        inside = np.abs(found[0]) < 8
+        off = np.max(np.abs(np.interp(found[0][inside], formula[0], formula[1])
+                            - found[1][inside]))
+        middle = abs(np.interp(0, found[0], found[1]) - np.interp(0, formula[0], formula[1]))
+        check(off < 0.02 and (before is None or middle < before / 4), name,
+              f"density off by {off:.1e}, in the middle {middle:.1e}")
+        before = middle
+
 print(f"1..{count}")
 sys.exit(bad > 0)

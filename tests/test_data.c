@@ -125,6 +125,8 @@ static void test_units(void **state)
 static void test_refused(void **state)
 {
     const char *names = "x,speed,sound\n";
+    th_data *data = NULL;
+    th_error err = {0};
     char *many;
 
     (void)state;
@@ -154,6 +156,10 @@ static void test_refused(void **state)
     refused(TH_SYSTEM_REDUCED, ":62: 2 cells, the header has 3");
     write_rows(names, 60, "100,1.5,1,1,1,1,1,1,1,1,1,1\n");
     refused(TH_SYSTEM_REDUCED, ":62: 12 cells, the header has 3");
+    write_rows(names, 60, "100,5,1,5,0,5\n");
+    refused(TH_SYSTEM_REDUCED, ":62: 6 cells, the header has 3; numbers take a decimal point");
+    write_rows("x;speed;sound\n", 60, "");
+    refused(TH_SYSTEM_REDUCED, ":1: \"x;speed;sound\": want commas between columns");
     write_rows(names, 60, "100,nan,1\n");
     refused(TH_SYSTEM_REDUCED, ":62: column speed holds \"nan\"");
     write_rows(names, 60, "100,,1\n");
@@ -164,6 +170,10 @@ static void test_refused(void **state)
     refused(TH_SYSTEM_REDUCED, ":62: column speed");
     write_rows(names, 60, "100,0,1\n");
     refused(TH_SYSTEM_REDUCED, "row 61 has speed 0");
+    /* a small speed is not zero, nor is the product of two */
+    write_rows("x,sound,speed\n0,1,1e-300\n", 60, "101,1,1e-300\n");
+    assert_int_equal(th_data_read(path, TH_SYSTEM_REDUCED, &data, &err), TH_OK);
+    th_data_destroy(data);
     write_rows(names, 60, "100,-1,1\n");
     refused(TH_SYSTEM_REDUCED, "row 61 has speed -1");
     write_rows(names, 60, "7.25,1,1\n");

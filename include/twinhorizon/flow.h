@@ -46,6 +46,8 @@ typedef struct {
     double width; /* > 0 */
 } th_feature;
 
+typedef struct th_flow th_flow;
+
 /**
  * A flow given by a callback.
  *
@@ -70,11 +72,14 @@ typedef struct {
     double scattering; /* equation of state: 0 contact, c^2 = g n; > 0 transverse ground state
                           of that scattering length, mu = omega_perp sqrt(1 + 4 a n). Only
                           the potential depends on it. */
+    int directions;    /* ways in which the flow is uncertain; 0: none is known */
+    /* The flow moved by so many standard deviations in one of them, the others at rest. NULL when
+     * directions is 0. */
+    th_status (*vary)(const void *ctx, int direction, double sigmas, const th_ends *ends,
+                      th_flow **out, th_error *err);
 } th_flow_spec;
 
 enum { TH_FLOW_NOTE_MAX = 800 };
-
-typedef struct th_flow th_flow;
 
 typedef enum { TH_HORIZON_BLACK, TH_HORIZON_WHITE } th_horizon_kind;
 
@@ -138,6 +143,17 @@ const th_pocket *th_flow_pockets(const th_flow *flow, int *count);   /* ascendin
 const char *th_flow_note(const th_flow *flow);  /* of th_flow_spec; "" when it had none */
 double th_flow_scattering(const th_flow *flow); /* of th_flow_spec; 0 contact */
 double th_flow_sound_max(const th_flow *flow);  /* largest c, the scale of speeds */
+
+/** In how many independent ways a flow made from measured values is uncertain; else 0. */
+int th_flow_directions(const th_flow *flow);
+
+/**
+ * The flow moved by `sigmas` standard deviations in one of them. It has plain memory and no
+ * directions of its own.
+ * @retval TH_EINVAL  direction out of range, out is NULL, or the flow moved so far does not exist
+ */
+TH_MUST_USE th_status th_flow_vary(const th_flow *flow, int direction, double sigmas, th_flow **out,
+                                   th_error *err);
 
 /** Flow inside a piece, edges included (their one-sided value). Open ends: piece -1 is the
  * uniform left end, piece = pieces the uniform right end. */

@@ -12,6 +12,7 @@
 #include <twinhorizon/modes.h>
 #include <twinhorizon/status.h>
 #include <twinhorizon/table.h>
+#include <twinhorizon/uncertainty.h>
 
 /* Exit codes: a contract with scripts. */
 enum { CLI_DONE = 0, CLI_UNDECIDED = 1, CLI_USAGE = 2, CLI_INTERNAL = 3 };
@@ -131,6 +132,22 @@ th_status cli_modes_write(const th_case *c, const th_flow *flow, const th_soluti
 
 /* Print d omega / d key of every growing mode. */
 th_status cli_print_sensitivity(const th_case *c, const th_solution *s, th_error *err) TH_MUST_USE;
+
+/* ---- data_errors.c -------------------------------------------------------------------------- */
+
+/* What the errors of a table do to the growing modes; nothing is known of other flows. */
+typedef struct {
+    bool known;
+    int count;       /* growing modes listed */
+    th_omega *sigma; /* [count] standard deviations */
+    th_omega *taper; /* [count] shifts with half the taper */
+    double distance; /* of the nearest change of their number, in standard deviations; 0: unknown */
+} cli_data_errors;
+
+th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_solution *s,
+                               cli_data_errors *out, th_error *err) TH_MUST_USE;
+void cli_data_errors_clear(cli_data_errors *errors);
+void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_data_errors *errors);
 
 /* ---- remarks.c ------------------------------------------------------------------------------ */
 

@@ -19,6 +19,8 @@ typedef struct {
     const th_case *c;
     cli_view view;
     const th_shape_key *key; /* the length */
+    double shown;            /* the text shows reduced lengths times this ... */
+    const char *word;        /* ... and this unit; a stretch is a bare number */
     double upto;
     th_table *table; /* NULL: text */
     bool text, map;
@@ -35,7 +37,7 @@ static bool open_ends(const state *w)
 static th_status start_table(state *w, const char *path, th_error *err)
 {
     const th_case *c = w->c;
-    const char *length = cli_unit(c, TH_DIM_LENGTH);
+    const char *length = cli_unit(c, w->key->dimension);
     const bool open = open_ends(w);
     const th_column own[OWN_COLUMNS] = {
         {.name = "order",
@@ -84,7 +86,7 @@ static th_status start_table(state *w, const char *path, th_error *err)
 static th_status put_rows(state *w, const th_onset_point *point, th_error *err)
 {
     const th_scale *scale = &w->c->scale;
-    const double length = th_scale_factor(scale, TH_DIM_LENGTH);
+    const double length = th_scale_factor(scale, w->key->dimension);
     th_status st = TH_OK;
 
     for (int i = 0; st == TH_OK && i < point->list->count; i++) {
@@ -132,21 +134,18 @@ static void print_value(const state *w, const th_shape_key *key, double value)
 /* The answer in a sentence. */
 static void print_sentence(const state *w, const th_onset_list *list)
 {
-    const cli_view *v = &w->view;
     int after = list->before;
 
     for (int i = 0; i < list->count; i++)
         after += list->onset[i].change;
     if (list->count == 0) {
         printf("No change: %d growing %s at every %s up to %.9g%s.\n", list->before,
-               list->before == 1 ? "mode" : "modes", w->key->key, list->to * v->length,
-               v->micrometres);
+               list->before == 1 ? "mode" : "modes", w->key->key, list->to * w->shown, w->word);
         return;
     }
     if (list->complete)
         printf("%d switch-on %s up to %s = %.9g%s: ", list->count,
-               list->count == 1 ? "length" : "lengths", w->key->key, list->to * v->length,
-               v->micrometres);
+               list->count == 1 ? "length" : "lengths", w->key->key, list->to * w->shown, w->word);
     else
         printf("The first %d switch-on %s of %s: ", list->count,
                list->count == 1 ? "length" : "lengths", w->key->key);
@@ -168,12 +167,12 @@ static void print_rows(const state *w, const th_onset_list *list)
            "change", "beyond", open ? "" : "  ", open ? "" : frequency);
     for (int i = 0; i < list->count; i++) {
         const th_onset *o = &list->onset[i];
-        const double error = o->gap_error * v->length;
+        const double error = o->gap_error * w->shown;
         char gap[CLI_NUMBER], omega[CLI_NUMBER];
 
         modes += o->change;
         printf("%5d %16s %8.1e  %-8s %+6d %6d%s%s\n", o->order,
-               cli_number(o->gap * v->length, error, gap), error, th_onset_kind_text(o->kind),
+               cli_number(o->gap * w->shown, error, gap), error, th_onset_kind_text(o->kind),
                o->change, modes, open ? "" : "  ",
                open ? "" : cli_number(o->omega_re * v->frequency, 0.0, omega));
     }
@@ -181,7 +180,6 @@ static void print_rows(const state *w, const th_onset_list *list)
 
 static void print_notes(const state *w, const th_onset_list *list)
 {
-    const cli_view *v = &w->view;
 
     if (open_ends(w))
         printf(
@@ -191,8 +189,8 @@ static void print_notes(const state *w, const th_onset_list *list)
     else
         printf("\nBeyond      says how many modes grow above a row; below the first: %d\n",
                list->before);
-    printf("Searched    %s from %.3g to %.9g%s%s\n", w->key->key, list->from * v->length,
-           list->to * v->length, v->micrometres,
+    printf("Searched    %s from %.3g to %.9g%s%s\n", w->key->key, list->from * w->shown,
+           list->to * w->shown, w->word,
            list->to < w->upto ? ", the longest sample for which the flow exists" : "");
 }
 
@@ -270,17 +268,19 @@ static th_status whole(const char *name, const char *text, int low, int fallback
 
 static th_status read_upto(const th_case *c, const char *text, double *out, th_error *err)
 {
+    const int key = th_onset_key(c->setup.shape);
+    const th_dimension dimension = key >= 0 ? c->setup.shape->key[key].dimension : TH_DIM_LENGTH;
+    const bool bare = c->scale.system == TH_SYSTEM_REDUCED || dimension == TH_DIM_NUMBER;
     th_error why = {0};
     th_status st;
 
     *out = th_onset_upto(c);
     if (text == NULL)
         return TH_OK;
-    st = c->scale.system == TH_SYSTEM_SI ? th_quantity_read(text, TH_DIM_LENGTH, out, &why)
-                                         : th_number_read(text, out, &why);
+    st = bare ? th_number_read(text, out, &why) : th_quantity_read(text, dimension, out, &why);
     if (st != TH_OK)
         return th_fail(err, st, "onset: --upto %.64s: %.400s", text, why.text);
-    *out /= th_scale_factor(&c->scale, TH_DIM_LENGTH);
+    *out /= th_scale_factor(&c->scale, dimension);
     if (!(*out > 0.0))
         return th_fail(err, TH_EINVAL, "onset: --upto %.64s, want a length > 0", text);
     return TH_OK;
@@ -297,6 +297,8 @@ static th_status run(state *w, const th_onset_options *options, const char *csv,
     w->key = &w->c->setup.shape->key[key];
     w->upto = options->upto;
     w->view = cli_view_of(w->c);
+    w->shown = w->key->dimension == TH_DIM_LENGTH ? w->view.length : 1.0;
+    w->word = w->key->dimension == TH_DIM_LENGTH ? w->view.micrometres : "";
     w->text = csv == NULL || strcmp(csv, "-") != 0;
     st = csv != NULL ? start_table(w, csv, err) : TH_OK;
     if (st == TH_OK)

@@ -121,7 +121,8 @@ static void print_notes(const cli_view *v, const th_flow *flow, const th_solutio
         puts("Note        an end is supersonic: in the matrix it carries an absorbing layer");
 }
 
-static void put_mode(th_table *table, const th_case *c, int number, const th_mode *m)
+static void put_mode(th_table *table, const th_case *c, int number, const th_mode *m,
+                     const cli_data_errors *errors)
 {
     const double rate = th_scale_factor(&c->scale, TH_DIM_RATE);
     char confirmed[TH_CONFIRMED_SIZE];
@@ -138,10 +139,17 @@ static void put_mode(th_table *table, const th_case *c, int number, const th_mod
     th_table_put_number(table, m->condition);
     th_table_put_number(table, m->residual);
     th_table_put_text(table, confirmed);
+    if (errors->known && number <= errors->count) {
+        th_table_put_number(table, errors->sigma[number - 1].re * rate);
+        th_table_put_number(table, errors->sigma[number - 1].im * rate);
+    } else if (errors->known) {
+        th_table_put_nothing(table);
+        th_table_put_nothing(table);
+    }
 }
 
-static th_status write_table(const th_case *c, const th_solution *s, const char *path,
-                             th_error *err)
+static th_status write_table(const th_case *c, const th_solution *s, const cli_data_errors *errors,
+                             const char *path, th_error *err)
 {
     const char *rate = cli_unit(c, TH_DIM_RATE);
     const th_column column[] = {
@@ -174,13 +182,22 @@ static th_status write_table(const th_case *c, const th_solution *s, const char 
          .title = "computations that agree",
          .datatype = "string",
          .description = "names joined by +"},
+        {.name = "data_error_re",
+         .title = "standard deviation of the angular frequency from the errors of the table",
+         .unit = rate,
+         .datatype = "number"},
+        {.name = "data_error_im",
+         .title = "standard deviation of the growth rate from the errors of the table",
+         .unit = rate,
+         .datatype = "number"},
     };
+    enum { all = sizeof column / sizeof column[0], of_data = 2 };
     th_table *table = NULL;
-    th_status st = cli_table(path, column, sizeof column / sizeof column[0],
+    th_status st = cli_table(path, column, errors->known ? all : all - of_data,
                              "modes of one configuration, fastest growing first", c, &table, err);
 
     for (int i = 0; st == TH_OK && i < s->count; i++) {
-        put_mode(table, c, i + 1, &s->mode[i]);
+        put_mode(table, c, i + 1, &s->mode[i], errors);
         st = th_table_end_row(table, err);
     }
     if (st == TH_OK)
@@ -236,6 +253,7 @@ int cli_solve(int argc, char **argv)
     th_case *c = NULL;
     th_flow *flow = NULL;
     th_solution *s = NULL;
+    cli_data_errors errors = {0};
     th_error err = {0};
     th_status st;
     bool only_table;
@@ -255,20 +273,25 @@ int cli_solve(int argc, char **argv)
         st = write_matrix(c, flow, matrix, &err);
     if (st == TH_OK)
         st = th_solve(flow, &(th_solve_options){.accuracy = c->accuracy}, &s, &err);
+    if (st == TH_OK)
+        st = cli_data_errors_find(c, flow, s, &errors, &err);
     if (st == TH_OK && csv != NULL)
-        st = write_table(c, s, csv, &err);
+        st = write_table(c, s, &errors, csv, &err);
     if (st == TH_OK && modes != NULL)
         st = cli_modes_write(c, flow, s, modes, &err);
     if (st == TH_OK && !only_table)
         print_all(c, flow, s);
-    if (st == TH_OK && !only_table)
+    if (st == TH_OK && !only_table) {
+        cli_data_errors_print(c, s, &errors);
         st = cli_print_remarks(c, s, &err);
+    }
     if (st == TH_OK && sensitivity != NULL)
         st = cli_print_sensitivity(c, s, &err);
     if (st != TH_OK)
         code = cli_failed(&err);
     else if (s->verdict == TH_VERDICT_UNDECIDED)
         code = CLI_UNDECIDED;
+    cli_data_errors_clear(&errors);
     th_solution_destroy(s);
     th_flow_destroy(flow);
     th_case_destroy(c);

@@ -72,6 +72,9 @@ static th_status check_spec(const th_flow_spec *spec, th_error *err)
     if (!(spec->scattering >= 0) || !isfinite(spec->scattering))
         return th_fail(err, TH_EINVAL, "flow: scattering length %g, want >= 0 and finite",
                        spec->scattering);
+    if (spec->directions < 0 || (spec->directions > 0 && spec->vary == NULL))
+        return th_fail(err, TH_EINVAL, "flow: %d directions, want >= 0 and a callback vary",
+                       spec->directions);
     for (int i = 0; i < spec->features; i++)
         if (!isfinite(spec->feature[i].x) || !isfinite(spec->feature[i].width) ||
             !(spec->feature[i].width > 0))
@@ -236,6 +239,8 @@ th_status th_flow_create_in(const th_flow_spec *spec, const th_ends *ends, th_wo
     flow->eval = spec->eval;
     flow->ctx = spec->ctx;
     flow->scattering = spec->scattering;
+    flow->directions = spec->directions;
+    flow->vary = spec->vary;
     if (spec->note != NULL)
         (void)snprintf(flow->note, sizeof flow->note, "%s", spec->note);
     st = copy_pieces(flow, spec, err);
@@ -366,6 +371,22 @@ double th_flow_scattering(const th_flow *flow)
 double th_flow_sound_max(const th_flow *flow)
 {
     return flow->sound_max;
+}
+
+int th_flow_directions(const th_flow *flow)
+{
+    return flow->directions;
+}
+
+th_status th_flow_vary(const th_flow *flow, int direction, double sigmas, th_flow **out,
+                       th_error *err)
+{
+    if (out != NULL)
+        *out = NULL;
+    if (flow == NULL || out == NULL || direction < 0 || direction >= flow->directions)
+        return th_fail(err, TH_EINVAL, "flow: direction %d of %d, and a place for the result",
+                       direction, flow != NULL ? flow->directions : 0);
+    return flow->vary(flow->ctx, direction, sigmas, &flow->ends, out, err);
 }
 
 void th_flow_eval(const th_flow *flow, int piece, double x, th_flow_point *point)

@@ -25,6 +25,9 @@ struct th_flow {
     th_flow_point end[2]; /* uniform states outside, left and right; unused on a ring */
     double flux;          /* J = n v */
     char note[TH_FLOW_NOTE_MAX];
+    int directions; /* of th_flow_spec, with vary */
+    th_status (*vary)(const void *ctx, int direction, double sigmas, const th_ends *ends,
+                      th_flow **out, th_error *err);
     double scattering; /* a of the transverse equation of state; 0 contact */
     double mu;         /* chemical potential that makes the potential 0 at edge[0] */
     double sound_max;

@@ -22,6 +22,7 @@ TH_MUST_USE th_status th_plateau_find(th_trap *trap, const th_upstream *up, cons
 enum { TH_FLOWS_MAX = 32 };
 typedef struct {
     int count;
+    double most; /* share of the pocket that must be supersonic */
     th_stationary flow[TH_FLOWS_MAX];
     double inside[TH_FLOWS_MAX]; /* supersonic part of the pocket, 0..1 */
     double ripple[TH_FLOWS_MAX]; /* largest less smallest density there over their sum */
@@ -29,8 +30,9 @@ typedef struct {
 
 /**
  * All stationary flows at a depth, the best one first: supersonic over most of the pocket, then the
- * smoothest there. Those whose density stays uniform to a rounding are left out.
- * @param[in] pocket  [2] where the pocket should be
+ * smoothest there; then those that are supersonic over less of it. Of a table, whose pocket is not
+ * known, a healing length is enough.
+ * @param[in] pocket  [2] where the pocket should be; of a table its whole length
  * @retval TH_OK      count may be 0
  */
 TH_MUST_USE th_status th_flows_find(const th_trap *trap, const th_upstream *up, double depth,

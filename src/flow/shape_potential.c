@@ -45,7 +45,7 @@ enum { ORDER = 16 };
 enum { DEPTH_STEPS = 16, DEPTH_HALVINGS = 14 };
 /* Features along a pocket whose density may undulate: one for each of these in healing lengths. */
 #define FEATURE_SPACING 1.0
-enum { FEATURES_MAX = 64, EDGES_MAX = 4 };
+enum { FEATURES_MAX = 64, EDGES_MAX = TH_SMOOTH_INTERVALS + 5 };
 
 typedef struct {
     th_trap trap;
@@ -265,10 +265,11 @@ static void lay_out(const solved *s, double *edge, bool *uniform, th_feature *fe
 
     spec->pieces = 0;
     edge[0] = first;
-    for (int i = 0; i <= s->trap.pieces && s->jumps > 0; i++)
-        edge[++spec->pieces] = s->trap.edge[i];
-    if (!(s->jumps == 1 && f->half)) /* a sharp step ends where its plateau begins */
-        edge[++spec->pieces] = last;
+    for (double at = th_trap_next_cut(&s->trap, first);
+         (s->jumps > 0 || s->trap.kind == TH_TRAP_TABLE) && at < last;
+         at = th_trap_next_cut(&s->trap, at))
+        edge[++spec->pieces] = at;
+    edge[++spec->pieces] = last;
     for (int i = 0; i < spec->pieces; i++)
         uniform[i] = s->plateau && s->jumps == 2 && i == 1;
     spec->features = 0;

@@ -19,8 +19,8 @@
 #define RING_SPEED_TOLERANCE 1e-9
 
 static const th_shape *const table[] = {
-    &th_shape_step,     &th_shape_tanh,       &th_shape_sech,     &th_shape_well,
-    &th_shape_barriers, &th_shape_continuity, &th_shape_potential};
+    &th_shape_step,     &th_shape_tanh,       &th_shape_sech,      &th_shape_well,
+    &th_shape_barriers, &th_shape_continuity, &th_shape_potential, &th_shape_table};
 
 int th_shape_count(void)
 {

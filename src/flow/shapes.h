@@ -15,6 +15,7 @@ extern const th_shape th_shape_well;
 extern const th_shape th_shape_barriers;
 extern const th_shape th_shape_continuity;
 extern const th_shape th_shape_potential;
+extern const th_shape th_shape_table;
 
 /* A tail may be cut where it has fallen to this part of the value it sits on: adding it then
  * changes nothing, since half a unit of the last place is 1.1e-16. */

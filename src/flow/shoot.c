@@ -236,6 +236,12 @@ static double look_at(const double *pocket, int i)
     return pocket[0] + (pocket[1] - pocket[0]) * (i + 0.5) / LOOKS;
 }
 
+/* The share of the pocket that must be supersonic: of a table a healing length. */
+static double share(const th_trap *trap, const th_upstream *up, const double *pocket)
+{
+    return trap->kind == TH_TRAP_TABLE ? 1 / (up->state.c_u * (pocket[1] - pocket[0])) : MOST;
+}
+
 static bool count_one(void *ctx, shot *s, const place *at)
 {
     look l = {.up = s->up, .low = HUGE_VAL};
@@ -244,7 +250,7 @@ static bool count_one(void *ctx, shot *s, const place *at)
 
     for (int i = 0; i < LOOKS; i++)
         stops[i] = look_at(s->pocket, i);
-    if (shoot(s, at, stops, LOOKS, see, &l, y) && l.fast > MOST * LOOKS)
+    if (shoot(s, at, stops, LOOKS, see, &l, y) && l.fast > share(s->trap, s->up, s->pocket) * LOOKS)
         ++*count;
     return *count == 0; /* one is enough */
 }
@@ -421,7 +427,9 @@ static bool better(const th_flow_list *list, int i, int k)
 {
     const bool fast_i = list->inside[i] > MOST, fast_k = list->inside[k] > MOST;
 
-    return fast_i != fast_k ? fast_i : list->ripple[i] < list->ripple[k];
+    if (fast_i && fast_k)
+        return list->ripple[i] < list->ripple[k];
+    return fast_i != fast_k ? fast_i : list->inside[i] > list->inside[k];
 }
 
 static void swap(th_flow_list *list, int i, int k)
@@ -444,6 +452,7 @@ th_status th_flows_find(const th_trap *trap, const th_upstream *up, double depth
     shot s;
 
     memset(out, 0, sizeof *out);
+    out->most = share(trap, up, pocket);
     prepare(&s, trap, up, depth, pocket);
     if (s.end > 0 && collect(&c, &s, NULL) && zeros_of(&s, false, collect, &c))
         (void)zeros_of(&s, true, collect, &c);
@@ -466,5 +475,5 @@ void th_flow_list_clear(th_flow_list *list)
 
 bool th_flow_list_transonic(const th_flow_list *list)
 {
-    return list->count > 0 && list->inside[0] > MOST;
+    return list->count > 0 && list->inside[0] > list->most;
 }

@@ -129,10 +129,11 @@ static int cut(const th_stationary *s, double scale, double from, double to, dou
 
     while (x < to) {
         double length = fmin(longest(s, scale, x), longest(s, scale, x + longest(s, scale, x)));
+        const double stop = fmin(to, th_trap_next_cut(s->trap, x));
         double next = x + length;
 
-        if (next > to - 0.3 * length)
-            next = to;
+        if (next > stop - 0.3 * length)
+            next = stop;
         n++;
         if (at != NULL)
             at[n] = next;

@@ -1,11 +1,13 @@
 /* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
- * External potentials, see trap.h. May call: data, status, GSL splines.
+ * External potentials, see trap.h. May call: data, smooth, spline, status.
  * Symbols: f form of the potential, w width, t = (x + half)/w.
  * To add a profile: a word, its edges in th_trap_make, its formula in th_trap_value.
  * Proved by tests/test_potential.c. */
 #include "trap.h"
+
+#include "spline.h"
 
 #include <math.h>
 
@@ -21,7 +23,12 @@ const char *const th_trap_word[] = {"well", "step", "barrier", "barriers", "tabl
 /* A table must be flat at its ends: over the outer parts of this length it may differ from its
  * value there by this share of its whole range. */
 #define FLAT_PART  0.03
-#define FLAT_SHARE 1e-3
+#define FLAT_SHARE 3e-2
+enum { FLAT_LOOKS = 64 };
+/* Departure from the level of an end, over the range of a table, that the core begins with; and how
+ * many places are looked at. */
+#define CORE_SHARE 1e-5
+enum { CORE_LOOKS = 2000 };
 
 static double step_up(double t) /* (1 + tanh t)/2 without cancellation */
 {
@@ -38,54 +45,89 @@ static void set_edges(th_trap *t, double left, double right, double reach, doubl
     t->core[1] = right + core;
 }
 
-/* Largest departure from the value at an end over the outer part of the table. */
-static double departure(const double *x, const double *v, int rows, bool left)
+static double curve(const th_smooth *fit, double x)
 {
-    const double reach = FLAT_PART * (x[rows - 1] - x[0]), end = left ? v[0] : v[rows - 1];
-    double most = 0;
+    const int i = th_spline_find(fit->intervals, fit->knot, x);
+    double power[TH_SPLINE_LOCAL];
 
-    for (int i = 0; i < rows; i++)
-        if (left ? x[i] - x[0] <= reach : x[rows - 1] - x[i] <= reach)
-            most = fmax(most, fabs(v[i] - end));
-    return most;
+    th_spline_powers(fit->intervals, fit->knot, fit->coef + i, i, x, power);
+    return power[0];
+}
+
+/* Mean of the curve over the outer part of the table, and its largest departure from that. */
+static double level(const th_smooth *fit, double end, double inwards, double *most)
+{
+    double sum = 0;
+
+    *most = 0;
+    for (int i = 0; i < FLAT_LOOKS; i++)
+        sum += curve(fit, end + inwards * (i + 0.5) / FLAT_LOOKS) / FLAT_LOOKS;
+    for (int i = 0; i < FLAT_LOOKS; i++)
+        *most = fmax(*most, fabs(curve(fit, end + inwards * (i + 0.5) / FLAT_LOOKS) - sum));
+    return sum;
+}
+
+/* The core begins where the curve leaves its level at this end by more than a share of its range or
+ * what the noise of the rows leaves in it. */
+static double core(const th_smooth *fit, double end, double other, double value, double range)
+{
+    const double least = fmax(CORE_SHARE * range, fit->noise / 2);
+    double at = end;
+
+    for (int i = 1; i < CORE_LOOKS; i++) {
+        const double x = end + (other - end) * i / CORE_LOOKS;
+
+        if (fabs(curve(fit, x) - value) > least)
+            break;
+        at = x;
+    }
+    return at;
 }
 
 static th_status make_table(th_trap *t, const th_data *table, th_error *err)
 {
-    const double *x = th_data_values(table, TH_DATA_X);
-    const double *v = th_data_values(table, TH_DATA_POTENTIAL);
-    const int rows = th_data_rows(table);
-    double low, high;
+    const th_smooth_rows rows = {.rows = th_data_rows(table),
+                                 .x = th_data_values(table, TH_DATA_X),
+                                 .y = th_data_values(table, TH_DATA_POTENTIAL),
+                                 .sigma = th_data_values(table, TH_DATA_POTENTIAL + TH_DATA_ERROR),
+                                 .strength = -1};
+    double left, right, reach, low, high;
+    th_status st;
 
-    if (v == NULL)
+    if (rows.y == NULL)
         return th_fail_key(err, TH_EINVAL, "file", "%s has no column potential",
                            th_data_path(table));
-    low = high = v[0];
-    for (int i = 0; i < rows; i++) {
-        low = fmin(low, v[i]);
-        high = fmax(high, v[i]);
+    st = th_smooth_fit(&rows, NULL, &t->fit, err);
+    if (st != TH_OK)
+        return st;
+    left = rows.x[0];
+    right = rows.x[rows.rows - 1];
+    low = high = rows.y[0];
+    for (int i = 0; i < rows.rows; i++) {
+        low = fmin(low, rows.y[i]);
+        high = fmax(high, rows.y[i]);
     }
     if (!(high > low))
         return th_fail_key(err, TH_EINVAL, "file", "%s: the potential is the same everywhere",
                            th_data_path(table));
+    reach = FLAT_PART * (right - left);
     for (int side = 0; side < 2; side++) {
-        const double off = departure(x, v, rows, side == 0) / (high - low);
+        double most;
+        const double here =
+            side == 0 ? level(&t->fit, left, reach, &most) : level(&t->fit, right, -reach, &most);
 
-        if (off > FLAT_SHARE)
+        if (most > FLAT_SHARE * (high - low))
             return th_fail_key(err, TH_EINVAL, "file",
                                "%s: the potential is not constant at its %s end: over the outer "
                                "%g %% of the table it changes by %.2g %% of its range, want %g %%",
                                th_data_path(table), side == 0 ? "left" : "right", 100 * FLAT_PART,
-                               100 * off, 100 * FLAT_SHARE);
+                               100 * most / (high - low), 100 * FLAT_SHARE);
+        *(side == 0 ? &t->first : &t->last) = here;
     }
-    t->spline = gsl_spline_alloc(gsl_interp_steffen, (size_t)rows);
-    if (t->spline == NULL)
-        return th_fail(err, TH_ENOMEM, "potential: a spline of %d rows", rows);
-    if (gsl_spline_init(t->spline, x, v, (size_t)rows) != 0)
-        return th_fail(err, TH_EBUG, "potential: the spline of a table");
-    t->first = v[0];
-    t->last = v[rows - 1] - v[0];
-    set_edges(t, x[0], x[rows - 1], 0, 0);
+    set_edges(t, left, right, 0, 0);
+    t->core[0] = core(&t->fit, left, right, t->first, high - low);
+    t->core[1] = core(&t->fit, right, left, t->last, high - low);
+    t->last -= t->first;
     return TH_OK;
 }
 
@@ -130,9 +172,7 @@ th_status th_trap_make(th_trap_kind kind, double gap, double width, const th_dat
 
 void th_trap_clear(th_trap *trap)
 {
-    if (trap->spline != NULL)
-        gsl_spline_free(trap->spline);
-    trap->spline = NULL;
+    th_smooth_clear(&trap->fit);
 }
 
 double th_trap_value(const th_trap *t, int piece, double x)
@@ -157,11 +197,22 @@ double th_trap_value(const th_trap *t, int piece, double x)
         b = (x - t->half) / w;
         return piece < 0 || piece >= t->pieces ? 0 : exp(-a * a) + exp(-b * b);
     case TH_TRAP_TABLE:
-        return piece < 0            ? 0
-               : piece >= t->pieces ? t->last
-                                    : gsl_spline_eval(t->spline, x, NULL) - t->first;
+        return piece < 0 ? 0 : piece >= t->pieces ? t->last : curve(&t->fit, x) - t->first;
     }
     return 0;
+}
+
+double th_trap_next_cut(const th_trap *t, double x)
+{
+    if (t->fit.intervals > 0 && x >= t->edge[0] && x < t->edge[1]) {
+        const int i = th_spline_find(t->fit.intervals, t->fit.knot, x);
+
+        return t->fit.knot[i + 1] > x ? t->fit.knot[i + 1] : HUGE_VAL;
+    }
+    for (int i = 0; i <= t->pieces; i++)
+        if (t->edge[i] > x)
+            return t->edge[i];
+    return HUGE_VAL;
 }
 
 int th_trap_piece(const th_trap *t, double x)

@@ -8,8 +8,7 @@
 #ifndef TH_FLOW_TRAP_H
 #define TH_FLOW_TRAP_H
 
-#include <gsl/gsl_spline.h>
-
+#include "smooth.h"
 #include "twinhorizon/flow.h"
 
 /* The words of the key `profile`, in the order of the enum. */
@@ -18,7 +17,7 @@ typedef enum {
     TH_TRAP_STEP,     /* -1 beyond 0 */
     TH_TRAP_BARRIER,  /* a Gaussian at 0 */
     TH_TRAP_BARRIERS, /* Gaussians at -gap/2 and gap/2 */
-    TH_TRAP_TABLE     /* a spline through the rows of a table, depth 1 */
+    TH_TRAP_TABLE     /* a smooth curve through the rows of a table, depth 1 */
 } th_trap_kind;
 extern const char *const th_trap_word[];
 
@@ -33,8 +32,8 @@ typedef struct {
     double core[2];                      /* f is constant to a millionth beyond these */
     int features;
     th_feature feature[2];
-    gsl_spline *spline; /* of a table; NULL else */
-    double first, last; /* value of a table at its ends, the first one taken off */
+    th_smooth fit;      /* of a table, 0 intervals else; smooth between its knots */
+    double first, last; /* value of a table at its left end, and how much more at its right one */
 } th_trap;
 
 /**
@@ -49,6 +48,9 @@ void th_trap_clear(th_trap *trap);
 
 /** f at x on a piece; -1 and pieces are the constant outside. */
 double th_trap_value(const th_trap *trap, int piece, double x);
+
+/** The first place > x where f is not smooth, an edge or a knot; HUGE_VAL: none. */
+double th_trap_next_cut(const th_trap *trap, double x);
 
 /** The piece that holds x, the right one at an edge. */
 int th_trap_piece(const th_trap *trap, double x);

@@ -14,7 +14,7 @@
 #include "onset/inside.h"
 
 /* Keys that are the length of the pocket, the first that a shape has counts. */
-static const char *const length_key[] = {"gap", "width"};
+static const char *const length_key[] = {"gap", "width", "stretch"};
 /* A search without any hint goes to this multiple of the base value: a pocket that grows one mode
  * then shows a handful. */
 #define UPTO_TIMES 4

@@ -1,0 +1,75 @@
+/* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
+ * SPDX-License-Identifier: GPL-3.0-or-later
+ *
+ * What the errors of a measured profile do to the answer of `solve`: standard deviations of the
+ * growing modes, the effect of the tapers, how safe their number is. */
+#include <math.h>
+#include <stdlib.h>
+#include <twinhorizon/uncertainty.h>
+
+#include "cli.h"
+
+th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_solution *s,
+                               cli_data_errors *out, th_error *err)
+{
+    th_omega *omega;
+    th_status st;
+
+    *out = (cli_data_errors){0};
+    while (out->count < s->count && s->mode[out->count].label == TH_LABEL_UNSTABLE)
+        out->count++; /* growing ones come first */
+    if (th_flow_directions(flow) == 0)
+        return TH_OK;
+    out->known = true;
+    st = th_count_distance(flow, &out->distance, err);
+    if (st == TH_ENONE) {
+        out->distance = 0;
+        st = TH_OK;
+    }
+    if (st != TH_OK || out->count == 0)
+        return st;
+    omega = calloc((size_t)out->count, sizeof *omega);
+    out->sigma = calloc((size_t)out->count, sizeof *out->sigma);
+    out->taper = calloc((size_t)out->count, sizeof *out->taper);
+    if (omega == NULL || out->sigma == NULL || out->taper == NULL)
+        st = th_fail(err, TH_ENOMEM, "solve: errors of %d modes", out->count);
+    for (int i = 0; st == TH_OK && i < out->count; i++)
+        omega[i] = (th_omega){s->mode[i].omega_re, s->mode[i].omega_im};
+    if (st == TH_OK)
+        st = th_flow_uncertainty(flow, s->omega_top, omega, out->count, out->sigma, err);
+    if (st == TH_OK)
+        st = th_taper_effect(&c->setup, s->omega_top, omega, out->count, out->taper, err);
+    free(omega);
+    return st;
+}
+
+void cli_data_errors_clear(cli_data_errors *errors)
+{
+    free(errors->sigma);
+    free(errors->taper);
+    *errors = (cli_data_errors){0};
+}
+
+void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_data_errors *errors)
+{
+    const cli_view v = cli_view_of(c);
+
+    if (!errors->known)
+        return;
+    for (int i = 0; i < errors->count; i++) {
+        const th_omega *sigma = &errors->sigma[i], *taper = &errors->taper[i];
+
+        printf(
+            "%smode %d: frequency +- %.2g%s, growth rate +- %.2g%s (%.2g of them above zero); half "
+            "the taper moves them by %.1g%s and %.1g%s\n",
+            i == 0 ? "Data        " : "            ", i + 1, sigma->re * v.frequency, v.hertz,
+            sigma->im * v.rate, v.per_second, s->mode[i].omega_im / sigma->im,
+            fabs(taper->re) * v.frequency, v.hertz, fabs(taper->im) * v.rate, v.per_second);
+    }
+    if (errors->count > 0)
+        puts("            one standard deviation, from the errors of the table to first order");
+    if (errors->distance > 0)
+        printf("%sthe nearest change of the number of growing modes is %.2g standard deviations of "
+               "the table away\n",
+               errors->count == 0 ? "Data        " : "            ", errors->distance);
+}
