@@ -115,6 +115,35 @@ static void print_pockets(const cli_view *v, const th_flow *flow)
                2.0 * M_PI / p[i].undulation * v->length, v->micrometres);
 }
 
+/* How the flow was found, a part a line. */
+static void print_note(const char *note)
+{
+    const char *end;
+
+    for (const char *label = "Found       "; *note != '\0'; label = "            ") {
+        end = strstr(note, "; ");
+        if (end == NULL)
+            end = note + strlen(note);
+        printf("%s%.*s\n", label, (int)(end - note), note);
+        note = *end == ';' ? end + 2 : end;
+    }
+}
+
+static void print_edges(const cli_view *v, const double *edge, int edges)
+{
+    enum { MANY = 8 };
+
+    if (edges > MANY)
+        printf("%d pieces between x = %.6g and %.6g%s\n", edges - 1, edge[0] * v->length,
+               edge[edges - 1] * v->length, v->micrometres);
+    else {
+        fputs("pieces between x =", stdout);
+        for (int i = 0; i < edges; i++)
+            printf(" %.6g", edge[i] * v->length);
+        printf("%s\n", v->micrometres);
+    }
+}
+
 /* The transverse frequency that the equation of state implies: c^2 = omega_perp 2 a n/r with
  * r = sqrt(1 + 4 a n). */
 static void print_transverse(const cli_view *v, const th_flow *flow)
@@ -165,15 +194,11 @@ void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
             th_flow_eval(flow, edges - 1, edge[edges - 1], &at);
         print_state(&v, "downstream", &at);
         print_transverse(&v, flow);
-        printf("            flux n v = %.6g%s, pieces between x =",
-               th_flow_flux(flow) * v.speed * v.density,
+        printf("            flux n v = %.6g%s, ", th_flow_flux(flow) * v.speed * v.density,
                v.si ? (c->density_given ? " /ms" : " mm/s (density relative to upstream)") : "");
-        for (int i = 0; i < edges; i++)
-            printf(" %.6g", edge[i] * v.length);
-        printf("%s\n", v.micrometres);
+        print_edges(&v, edge, edges);
     }
-    if (*th_flow_note(flow) != '\0')
-        printf("Found       %s\n", th_flow_note(flow));
+    print_note(th_flow_note(flow));
     print_horizons(&v, flow);
     print_pockets(&v, flow);
 }
