@@ -2,7 +2,7 @@
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
  * Uncertainties of modes from those of a flow. In: a flow or its setup, modes. Out: standard
- * deviations, shifts. Calls flow, matching, index.
+ * deviations, shifts. Calls flow, matching.
  * N(p) = -F/F_omega at a mode's omega is Newton's step for the flow moved by p; its slope at p = 0
  * is d omega/dp, as in sensitivity.c. N(0), what is left of the mode's own error, is taken off.
  * Proof: tests/test_table_flow.c. */
@@ -13,7 +13,6 @@
 
 #include "alloc.h"
 #include "flow/table.h"
-#include "twinhorizon/index.h"
 #include "twinhorizon/matching.h"
 
 /* Step in a direction, in standard deviations: small, so that the answer is that of first order,
@@ -110,35 +109,5 @@ done:
     free(own);
     th_flow_destroy(other);
     th_flow_destroy(flow);
-    return st;
-}
-
-th_status th_count_distance(const th_flow *flow, double *sigmas, th_error *err)
-{
-    th_index own, other;
-    double sum = 0;
-    th_status st;
-
-    if (flow == NULL || sigmas == NULL)
-        return th_fail(err, TH_EINVAL, "uncertainty: want a flow and a place for the result");
-    if (th_flow_directions(flow) == 0 || th_flow_ends(flow).kind != TH_ENDS_OPEN)
-        return th_fail(err, TH_ENONE, "uncertainty: no errors of the flow are known, or no index");
-    st = th_index_open(flow, &own, err);
-    for (int d = 0; st == TH_OK && d < th_flow_directions(flow); d++) {
-        th_flow *moved = NULL;
-        double turns;
-
-        st = th_flow_vary(flow, d, part, &moved, err);
-        if (st == TH_OK)
-            st = th_index_open(moved, &other, err);
-        th_flow_destroy(moved);
-        if (st != TH_OK)
-            break;
-        turns = (other.margin - own.margin) / M_PI; /* the margin jumps by pi between two changes */
-        turns -= floor(turns + 0.5);
-        sum += turns * turns;
-    }
-    if (st == TH_OK)
-        *sigmas = sum > 0 ? part * fabs(own.margin) / (M_PI * sqrt(sum)) : HUGE_VAL;
     return st;
 }

@@ -35,14 +35,15 @@ index:    mesh lapack
 index_closed: index
 modes:    spectrum census index
 sensitivity: matching
-uncertainty: matching index
+uncertainty: matching
+count_distance: index
 profile:  modes
 point:    modes
 journal:  case point
 parallel: alloc status
 sweep:    journal parallel buffer io_error version
 onset:    modes case parallel
-cli:      sweep onset profile sensitivity uncertainty table version
+cli:      sweep onset profile sensitivity uncertainty count_distance table version
 '
 
 number=0 bad=0

@@ -589,8 +589,17 @@ static void test_refused(void **state)
     set(&t, "taper", 15.5);
     refused(&t, "taper", "taper = 15.5, want less than half the table's length 30");
     t = s;
-    set(&t, "taper", 0.3);
-    refused(&t, "taper", "taper = 0.3 holds 4 rows at the left end, want 5 or more");
+    set(&t, "taper", 0.15);
+    refused(&t, "taper", "taper = 0.15 holds 2 rows at the left end, want 3 or more");
+    set(&t, "taper", 0.25);
+    {
+        const th_omega mode = {0.1, 0.1};
+        th_omega shift;
+        th_error err = {0};
+
+        assert_int_equal(th_taper_effect(&t, 1, &mode, 1, &shift, &err), TH_ENONE);
+        assert_non_null(strstr(err.text, "taper = 0.125 holds 2 rows"));
+    }
     t = s;
     set(&t, "state", TH_STATE_TRANSVERSE);
     refused(&t, "scattering_length", "scattering_length is missing");

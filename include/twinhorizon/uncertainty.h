@@ -51,18 +51,6 @@ TH_MUST_USE th_status th_taper_effect(const th_flow_setup *setup, double omega_t
                                       const th_omega *omega, int count, th_omega *shift,
                                       th_error *err);
 
-/**
- * How far the number of growing modes is from its nearest change, in standard deviations of the
- * flow's data: margin of the static index (index.h) over the root of the sum over all directions of
- * its squared slope. Below 2 or so another number is about as likely.
- *
- * @param[out] sigmas  > 0; HUGE_VAL when the margin does not move
- * @retval TH_ENONE    no directions, or no static index (ends that are not open and subsonic)
- * @retval TH_EUNDECIDED, TH_ECONVERGE, TH_ENOMEM  as th_index_open, th_flow_vary
- * Tests: tests/test_uncertainty.c.
- */
-TH_MUST_USE th_status th_count_distance(const th_flow *flow, double *sigmas, th_error *err);
-
 #ifdef __cplusplus
 }
 #endif

@@ -5,12 +5,13 @@
  * growing modes, the effect of the tapers, how safe their number is. */
 #include <math.h>
 #include <stdlib.h>
+#include <twinhorizon/count_distance.h>
 #include <twinhorizon/uncertainty.h>
 
 #include "cli.h"
 
-th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_solution *s,
-                               cli_data_errors *out, th_error *err)
+    th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_solution *s,
+                                   cli_data_errors *out, th_error *err)
 {
     th_omega *omega;
     th_status st;

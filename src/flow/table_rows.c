@@ -21,7 +21,7 @@ enum { PASSES = 2 };
  * noise passes 5 in one of 50 000 tables. */
 static const double uniform_share = 0.02, uniform_deviations = 5.0;
 /* Places of an end that are looked at, and rows it needs for a mean. */
-enum { PLACES = 64, ROWS_MIN = 5 };
+enum { PLACES = 64, ROWS_MIN = 3 };
 /* The error of the mean flux is that of the means of so many stretches of rows: then a flux that
  * drifts along x counts, not only noise. */
 enum { STRETCHES = 8 };
