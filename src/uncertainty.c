@@ -84,6 +84,7 @@ th_status th_taper_effect(const th_flow_setup *setup, double omega_top, const th
     double complex *own = NULL;
     th_flow *flow = NULL, *other = NULL;
     th_flow_setup half;
+    th_error why;
     th_status st;
 
     if (setup == NULL)
@@ -97,7 +98,9 @@ th_status th_taper_effect(const th_flow_setup *setup, double omega_top, const th
         goto done;
     half = *setup;
     th_table_set_taper(&half, th_table_taper(setup) / 2);
-    st = th_flow_build(&half, &other, err);
+    st = th_flow_build(&half, &other, &why);
+    if (st != TH_OK) /* the taper in force is fine, half of it need not be */
+        st = th_fail_key(err, st == TH_EINVAL ? TH_ENONE : st, why.key, "%s", why.text);
     if (st == TH_OK)
         st = newton_steps(other, omega_top, omega, count, own + count, err);
     for (int i = 0; i < count && st == TH_OK; i++) {

@@ -14,6 +14,7 @@
 #include <cmocka.h>
 
 #include "flows.h"
+#include "refuse.h"
 #include "twinhorizon/modes.h"
 
 enum { C_U, M, FLUX, PROFILE, GAP, WIDTH, DEPTH, TABLE, STATE, A, KEYS };
@@ -282,12 +283,40 @@ static void test_refused(void **state)
     refused(s, "kind", "cannot close on a ring");
 }
 
+/* The k-th allocation fails, for all k until the call has enough; depth found and given. */
+static void test_memory(void **state)
+{
+    (void)state;
+    for (int given = 0; given < 2; given++) {
+        const th_flow_setup s = setup_of(WELL, 0.6, 1.5, given ? 0 : 0.12, given ? 0.5 : 0, 0);
+        long k = 0;
+
+        for (;; k++) {
+            th_flow *flow = NULL;
+            th_error err = {0};
+            th_status st;
+
+            refuse_from(k);
+            st = th_flow_build(&s, &flow, &err);
+            if (refuse_stop()) {
+                assert_int_equal(st, TH_OK);
+                th_flow_destroy(flow);
+                break;
+            }
+            assert_int_equal(st, TH_ENOMEM);
+            assert_null(flow);
+        }
+        assert_true(k > 10);
+    }
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(test_sharp_well), cmocka_unit_test(test_bernoulli),
         cmocka_unit_test(test_waterfall),  cmocka_unit_test(test_limits),
         cmocka_unit_test(test_random),     cmocka_unit_test(test_refused),
+        cmocka_unit_test(test_memory),
     };
 
     return cmocka_run_group_tests(tests, NULL, NULL);

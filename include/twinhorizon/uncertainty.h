@@ -43,9 +43,9 @@ TH_MUST_USE th_status th_flow_uncertainty(const th_flow *flow, double omega_top,
  *
  * @param[in]  setup  the configuration whose modes these are
  * @param[out] shift  [count]
- * @retval TH_ENONE   the shape has no tapers
- * @retval TH_EINVAL  as th_flow_uncertainty, or so short a taper breaks a rule (err->key is taper
- *                    or file)
+ * @retval TH_ENONE   the shape has no tapers, or so short ones break a rule: too few rows in them,
+ *                    or not uniform over them; the text says which
+ * @retval TH_EINVAL  as th_flow_uncertainty, or the setup itself breaks a rule
  */
 TH_MUST_USE th_status th_taper_effect(const th_flow_setup *setup, double omega_top,
                                       const th_omega *omega, int count, th_omega *shift,

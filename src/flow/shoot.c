@@ -15,6 +15,7 @@
 #include <gsl/gsl_odeiv2.h>
 #include <string.h>
 
+#include "../alloc.h"
 #include "plateau.h"
 
 /* Places tried on each orbit. */
@@ -304,8 +305,8 @@ static th_status guess(shot *s, const place *at, th_stationary *flow, th_error *
     const int p = flow->rule->order, nodes = flow->elements * p + 1;
     const double first = s->trap->core[0], last = s->trap->core[1];
     const double decay = 2 * sqrt(fmax(0, th_upstream_room(s->up, s->end)));
-    double *stops = malloc((size_t)nodes * sizeof *stops), y[2] = {1, 0};
-    int *node = malloc((size_t)nodes * sizeof *node), inside = 0;
+    double *stops = th_alloc((size_t)nodes, sizeof *stops), y[2] = {1, 0};
+    int *node = th_alloc((size_t)nodes, sizeof *node), inside = 0;
     filler f = {.flow = flow, .node = node};
     place beyond;
 

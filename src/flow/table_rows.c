@@ -31,6 +31,8 @@ static const double told = 0.01;
 /* Stated errors may be too small by this factor without a word: in 300 rows it differs from 1 by
  * 0.04 by chance. */
 static const double told_factor = 1.1;
+/* Relative noise below this is that of computed tables: rounding, or too few rows. */
+static const double told_noise = 1e-6;
 /* [flow] density and the table's own may differ by this, relatively: by the calibration of a
  * camera, not by a unit. */
 static const double same_density = 0.1;
@@ -329,7 +331,7 @@ void th_table_note(const th_table *t, int rows, char *note, size_t size)
         if (s->known && s->spread > told_factor * s->together && used < size)
             used += (size_t)snprintf(note + used, size - used, ", stated errors times %.3g",
                                      s->spread / s->together);
-        if (s->together > 1 && used < size)
+        if (s->together > 1 && s->noise > told_noise && used < size)
             used += (size_t)snprintf(note + used, size - used,
                                      ", neighbouring rows go together, so error bars times %.2g",
                                      s->together);
