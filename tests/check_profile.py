@@ -14,6 +14,7 @@ import os
 import subprocess
 import sys
 import tempfile
+import time
 
 import numpy as np
 from scipy.interpolate import BSpline, make_lsq_spline
@@ -155,6 +156,15 @@ for name, errors, strength in [("chosen strength", None, -1.0), ("given strength
     library.th_smooth_clear(ctypes.byref(s))
 
 
+# The most rows that a table may have.
+many = np.linspace(-15, 15, 100000)
+start = time.process_time()
+s = fit(many, profile(many) + 0.02 * random.standard_normal(len(many)), None, -1.0)
+seconds = time.process_time() - start
+check("100000 rows take less than a second", seconds < 1, seconds)
+library.th_smooth_clear(ctypes.byref(s))
+
+
 # cases/profile.ini
 def run(*words):
     done = subprocess.run([program, *words], capture_output=True, text=True)
@@ -219,10 +229,10 @@ with tempfile.TemporaryDirectory() as folder:
              for path in (case, reduced)]
     rates = [[(float(m["omega_re"]), float(m["omega_im"])) for m in found
               if m["label"] == "unstable"] for found in modes]
-    time = length / unit
+    second = length / unit
     check("SI and reduced units agree", len(rates[0]) in (1, 2) and len(rates[1]) == len(rates[0])
-          and np.allclose(np.array(rates[0]) * time, rates[1], rtol=1e-6, atol=1e-9),
-          np.array(rates[0]) * time, rates[1])
+          and np.allclose(np.array(rates[0]) * second, rates[1], rtol=1e-6, atol=1e-9),
+          np.array(rates[0]) * second, rates[1])
 
 print(f"1..{results}")
 sys.exit(failures > 0)

@@ -10,8 +10,8 @@
 
 #include "cli.h"
 
-    th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_solution *s,
-                                   cli_data_errors *out, th_error *err)
+th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_solution *s,
+                               cli_data_errors *out, th_error *err)
 {
     th_omega *omega;
     th_status st;
@@ -73,4 +73,12 @@ void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_dat
         printf("%sthe nearest change of the number of growing modes is %.2g standard deviations of "
                "the table away\n",
                errors->count == 0 ? "Data        " : "            ", errors->distance);
+    if (errors->count > 0 && s->verdict == TH_VERDICT_UNSTABLE)
+        printf("To quote    the profile has %d growing %s; the fastest grows at %.3g +- %.2g%s and "
+               "oscillates at %.4g +- %.2g%s (one standard deviation of the data; numerics below "
+               "%.0e%s)\n",
+               s->unstable, s->unstable == 1 ? "mode" : "modes", s->mode[0].omega_im * v.rate,
+               errors->sigma[0].im * v.rate, v.per_second, s->mode[0].omega_re * v.frequency,
+               errors->sigma[0].re * v.frequency, v.hertz, s->mode[0].omega_error * v.rate,
+               v.per_second);
 }
