@@ -40,6 +40,9 @@ th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_s
         st = th_flow_uncertainty(flow, s->omega_top, omega, out->count, out->sigma, err);
     if (st == TH_OK)
         st = th_taper_effect(&c->setup, s->omega_top, omega, out->count, out->taper, err);
+    out->taper_known = st == TH_OK;
+    if (st == TH_ENONE) /* half the taper makes no flow */
+        st = TH_OK;
     free(omega);
     return st;
 }
