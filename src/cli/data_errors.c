@@ -63,12 +63,13 @@ void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_dat
     for (int i = 0; i < errors->count; i++) {
         const th_omega *sigma = &errors->sigma[i], *taper = &errors->taper[i];
 
-        printf(
-            "%smode %d: frequency +- %.2g%s, growth rate +- %.2g%s (%.2g of them above zero); half "
-            "the taper moves them by %.1g%s and %.1g%s\n",
-            i == 0 ? "Data        " : "            ", i + 1, sigma->re * v.frequency, v.hertz,
-            sigma->im * v.rate, v.per_second, s->mode[i].omega_im / sigma->im,
-            fabs(taper->re) * v.frequency, v.hertz, fabs(taper->im) * v.rate, v.per_second);
+        printf("%smode %d: frequency +- %.2g%s, growth rate +- %.2g%s (%.2g of them above zero)",
+               i == 0 ? "Data        " : "            ", i + 1, sigma->re * v.frequency, v.hertz,
+               sigma->im * v.rate, v.per_second, s->mode[i].omega_im / sigma->im);
+        if (errors->taper_known)
+            printf("; half the taper moves them by %.1g%s and %.1g%s",
+                   fabs(taper->re) * v.frequency, v.hertz, fabs(taper->im) * v.rate, v.per_second);
+        putchar('\n');
     }
     if (errors->count > 0)
         puts("            one standard deviation, from the errors of the table to first order");
