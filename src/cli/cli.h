@@ -137,10 +137,12 @@ th_status cli_print_sensitivity(const th_case *c, const th_solution *s, th_error
 
 /* What the errors of a table do to the growing modes; nothing is known of other flows. */
 typedef struct {
-    bool known;
+    bool known;       /* the flow has errors at all */
     int count;        /* growing modes listed */
     th_omega *sigma;  /* [count] standard deviations */
     th_omega *taper;  /* [count] shifts with half the taper ... */
+    bool sigma_known; /* false: why not */
+    char why[256];
     bool taper_known; /* ... where that makes a flow */
     double distance; /* of the nearest change of their number, in standard deviations; 0: unknown */
 } cli_data_errors;

@@ -10,10 +10,43 @@
 
 #include "cli.h"
 
+/* Failures that are an answer: a moved table makes no flow, or its modes cannot be followed. */
+static bool no_answer(th_status st)
+{
+    return st == TH_EINVAL || st == TH_ECONVERGE || st == TH_EUNDECIDED || st == TH_ENONE;
+}
+
+/* Errors of the growing modes. */
+static th_status find_modes(const th_case *c, const th_flow *flow, const th_solution *s,
+                            cli_data_errors *out, th_error *err)
+{
+    th_omega *omega = calloc((size_t)out->count, sizeof *omega);
+    th_error why = {.status = TH_OK};
+    th_status st = TH_OK;
+
+    out->sigma = calloc((size_t)out->count, sizeof *out->sigma);
+    out->taper = calloc((size_t)out->count, sizeof *out->taper);
+    if (omega == NULL || out->sigma == NULL || out->taper == NULL)
+        st = th_fail(&why, TH_ENOMEM, "solve: errors of %d modes", out->count);
+    for (int i = 0; st == TH_OK && i < out->count; i++)
+        omega[i] = (th_omega){s->mode[i].omega_re, s->mode[i].omega_im};
+    if (st == TH_OK)
+        st = th_flow_uncertainty(flow, s->omega_top, omega, out->count, out->sigma, &why);
+    out->sigma_known = st == TH_OK;
+    if (st == TH_OK) {
+        st = th_taper_effect(&c->setup, s->omega_top, omega, out->count, out->taper, &why);
+        out->taper_known = st == TH_OK;
+    } else if (no_answer(st)) {
+        (void)snprintf(out->why, sizeof out->why, "%s", why.text);
+    }
+    free(omega);
+    return no_answer(st) || st == TH_OK ? TH_OK : th_fail(err, st, "%s", why.text);
+}
+
 th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_solution *s,
                                cli_data_errors *out, th_error *err)
 {
-    th_omega *omega;
+    th_error why = {.status = TH_OK};
     th_status st;
 
     *out = (cli_data_errors){0};
@@ -22,29 +55,12 @@ th_status cli_data_errors_find(const th_case *c, const th_flow *flow, const th_s
     if (th_flow_directions(flow) == 0)
         return TH_OK;
     out->known = true;
-    st = th_count_distance(flow, &out->distance, err);
-    if (st == TH_ENONE) {
+    st = th_count_distance(flow, &out->distance, &why);
+    if (st != TH_OK)
         out->distance = 0;
-        st = TH_OK;
-    }
-    if (st != TH_OK || out->count == 0)
-        return st;
-    omega = calloc((size_t)out->count, sizeof *omega);
-    out->sigma = calloc((size_t)out->count, sizeof *out->sigma);
-    out->taper = calloc((size_t)out->count, sizeof *out->taper);
-    if (omega == NULL || out->sigma == NULL || out->taper == NULL)
-        st = th_fail(err, TH_ENOMEM, "solve: errors of %d modes", out->count);
-    for (int i = 0; st == TH_OK && i < out->count; i++)
-        omega[i] = (th_omega){s->mode[i].omega_re, s->mode[i].omega_im};
-    if (st == TH_OK)
-        st = th_flow_uncertainty(flow, s->omega_top, omega, out->count, out->sigma, err);
-    if (st == TH_OK)
-        st = th_taper_effect(&c->setup, s->omega_top, omega, out->count, out->taper, err);
-    out->taper_known = st == TH_OK;
-    if (st == TH_ENONE) /* half the taper makes no flow */
-        st = TH_OK;
-    free(omega);
-    return st;
+    if (st != TH_OK && !no_answer(st))
+        return th_fail(err, st, "%s", why.text);
+    return out->count > 0 ? find_modes(c, flow, s, out, err) : TH_OK;
 }
 
 void cli_data_errors_clear(cli_data_errors *errors)
@@ -60,7 +76,9 @@ void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_dat
 
     if (!errors->known)
         return;
-    for (int i = 0; i < errors->count; i++) {
+    if (errors->count > 0 && !errors->sigma_known)
+        printf("Data        errors of the modes are not known: %s\n", errors->why);
+    for (int i = 0; errors->sigma_known && i < errors->count; i++) {
         const th_omega *sigma = &errors->sigma[i], *taper = &errors->taper[i];
 
         printf("%smode %d: frequency +- %.2g%s, growth rate +- %.2g%s (%.2g of them above zero)",
@@ -71,13 +89,13 @@ void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_dat
                    fabs(taper->re) * v.frequency, v.hertz, fabs(taper->im) * v.rate, v.per_second);
         putchar('\n');
     }
-    if (errors->count > 0)
+    if (errors->sigma_known)
         puts("            one standard deviation, from the errors of the table to first order");
     if (errors->distance > 0)
         printf("%sthe nearest change of the number of growing modes is %.2g standard deviations of "
                "the table away\n",
                errors->count == 0 ? "Data        " : "            ", errors->distance);
-    if (errors->count > 0 && s->verdict == TH_VERDICT_UNSTABLE)
+    if (errors->sigma_known && s->verdict == TH_VERDICT_UNSTABLE)
         printf("To quote    the profile has %d growing %s; the fastest grows at %.3g +- %.2g%s and "
                "oscillates at %.4g +- %.2g%s (one standard deviation of the data; numerics below "
                "%.0e%s)\n",

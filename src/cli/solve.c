@@ -139,7 +139,7 @@ static void put_mode(th_table *table, const th_case *c, int number, const th_mod
     th_table_put_number(table, m->condition);
     th_table_put_number(table, m->residual);
     th_table_put_text(table, confirmed);
-    if (errors->known && number <= errors->count) {
+    if (errors->sigma_known && number <= errors->count) {
         th_table_put_number(table, errors->sigma[number - 1].re * rate);
         th_table_put_number(table, errors->sigma[number - 1].im * rate);
     } else if (errors->known) {
