@@ -142,7 +142,7 @@ typedef struct {
     th_omega *sigma;  /* [count] standard deviations */
     th_omega *taper;  /* [count] shifts with half the taper ... */
     bool sigma_known; /* false: why not */
-    char why[256];
+    char why[512];
     bool taper_known; /* ... where that makes a flow */
     double distance; /* of the nearest change of their number, in standard deviations; 0: unknown */
 } cli_data_errors;
