@@ -261,6 +261,36 @@ def main():
           and [r["status"] for r in rows] == ["ok", "undecided", "ok"],
           "a point on a switch-on is undecided, in a sweep as alone")
     check(not rows_of("switch", "events.csv"), "and has no events")
+    # the table of a case goes with the sweep: parts merge without the original, another table is
+    # another case, and no file of the sweep is overwritten
+    os.mkdir("camera")
+    with open("camera/profile.csv", "w", encoding="ascii") as file:
+        file.write("x,speed,sound\n")
+        file.writelines(f"{i / 10},1,{1.5 - 1.1 * math.exp(-(i / 30) ** 2)!r}\n"
+                        for i in range(-120, 121))
+    write("camera/table.ini", "[units]\nsystem = reduced\n[flow]\nshape = table\n"
+          "file = profile.csv\n[sweep]\nstretch = 0.8 to 1.2 in 6\n")
+    whole = run("sweep", "camera/table.ini", "--out", "table")
+    halves = [run("sweep", "camera/table.ini", "--out", f"table{k}", "--part", f"{k}/2")
+              for k in (1, 2)]
+    os.rename("camera/profile.csv", "camera/points.csv")
+    merged = run("merge", "table1", "table2", "--out", "table12")
+    check(whole.returncode == merged.returncode == 0 and all(h.returncode == 0 for h in halves)
+          and open("table/points.csv").read() == open("table12/points.csv").read(),
+          "a sweep keeps its table: parts merge when the original has moved")
+    with open("table2/profile.csv", "a", encoding="ascii") as file:
+        file.write("12.5,1,1.5\n")
+    changed = run("merge", "table2", "table1", "--out", "table21")
+    check(changed.returncode == 2 and "is not the one that was swept" in changed.stderr,
+          "a changed copy of the table is noticed")
+    taken = run("sweep", "camera/table.ini", "--set", "flow.file=camera/points.csv", "--out", "taken")
+    check(taken.returncode == 2 and "needs another name" in taken.stderr
+          and not os.path.exists("taken/points.csv"), "a table may not be called like a sweep's own")
+    with open("camera/profile.csv", "w", encoding="ascii") as file:
+        file.write(open("camera/points.csv", encoding="ascii").read().replace("12.0,1,", "12.0,1.0,"))
+    other = run("sweep", "camera/table.ini", "--out", "table", "--resume")
+    check(other.returncode == 2 and "rows, hash" in other.stderr,
+          "a sweep does not go on with another table")
     nowhere = run("sweep", "step.ini", "--out", "no/such/folder")
     check(nowhere.returncode == 2 and nowhere.stderr.count("\n") == 1, "a missing folder is named")
     print("1..%d" % count)
