@@ -67,6 +67,24 @@ th_status th_lapack_band_solve(int n, int lower, int upper, const double complex
                    n, err);
 }
 
+th_status th_lapack_band_factor_real(int n, int lower, int upper, double *band, int *pivot,
+                                     th_error *err)
+{
+    return verdict(
+        "dgbtrf",
+        LAPACKE_dgbtrf(LAPACK_COL_MAJOR, n, n, lower, upper, band, 2 * lower + upper + 1, pivot), n,
+        err);
+}
+
+th_status th_lapack_band_solve_real(int n, int lower, int upper, const double *band,
+                                    const int *pivot, int count, double *b, th_error *err)
+{
+    return verdict("dgbtrs",
+                   LAPACKE_dgbtrs(LAPACK_COL_MAJOR, 'N', n, lower, upper, count, band,
+                                  2 * lower + upper + 1, pivot, b, n),
+                   n, err);
+}
+
 th_status th_lapack_eigen_symmetric(int n, double *a, double *lambda, th_error *err)
 {
     return verdict("dsyev", LAPACKE_dsyev(LAPACK_COL_MAJOR, 'N', 'L', n, a, n, lambda), n, err);

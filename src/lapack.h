@@ -37,6 +37,15 @@ TH_MUST_USE th_status th_lapack_band_solve(int n, int lower, int upper, const do
                                            const int *pivot, int transposed, double complex *b,
                                            th_error *err);
 
+/** As th_lapack_band_factor for a real matrix (dgbtrf). */
+TH_MUST_USE th_status th_lapack_band_factor_real(int n, int lower, int upper, double *band,
+                                                 int *pivot, th_error *err);
+
+/** Solve A X = B with the real factors in place (dgbtrs). @param[in,out] b  [n, count] */
+TH_MUST_USE th_status th_lapack_band_solve_real(int n, int lower, int upper, const double *band,
+                                                const int *pivot, int count, double *b,
+                                                th_error *err);
+
 /**
  * All eigenvalues of a real symmetric matrix, ascending (dsyev, no vectors).
  * @param[in,out] a  [n, n], lower triangle read, destroyed

@@ -38,6 +38,7 @@ sensitivity: matching
 uncertainty: matching
 count_distance: index
 profile:  modes
+seed:     modes
 point:    modes
 journal:  case point
 parallel: alloc status

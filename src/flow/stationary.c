@@ -29,6 +29,8 @@
 /* Largest part of a that one step may take away. */
 #define DAMP 0.5
 enum { ROUNDS = 60, REFINEMENTS = 4 };
+/* Elements at most: 64000 unknowns are a second and 30 MB for each step of Newton's method. */
+enum { ELEMENTS_MAX = 4000 };
 /* A step below this part of a is rounding; it is made, and ends the iteration. */
 #define SETTLED 1e-11
 
@@ -127,7 +129,7 @@ static int cut(const th_stationary *s, double scale, double from, double to, dou
     int n = 0;
     double x = from;
 
-    while (x < to) {
+    while (x < to && n <= ELEMENTS_MAX) {
         double length = fmin(longest(s, scale, x), longest(s, scale, x + longest(s, scale, x)));
         const double stop = fmin(to, th_trap_next_cut(s->trap, x));
         double next = x + length;
@@ -172,8 +174,20 @@ th_status th_stationary_create(const th_trap *trap, const th_upstream *up, bool 
         piece[stretches] = p;
         stop[++stretches] = to;
     }
-    for (int i = 0; i < stretches; i++)
-        total += cut(out, scale, stop[i], stop[i + 1], NULL);
+    for (int i = 0; i < stretches; i++) {
+        const double least = (stop[i + 1] - stop[i]) / (PART * 1.5 / up->state.c_u);
+
+        /* a lower bound first: counting alone could take for ever */
+        if (least > ELEMENTS_MAX)
+            total = ELEMENTS_MAX + 1;
+        if (total <= ELEMENTS_MAX)
+            total += cut(out, scale, stop[i], stop[i + 1], NULL);
+    }
+    if (total > ELEMENTS_MAX)
+        return th_fail_key(err, TH_EINVAL, "mach",
+                           "the flow varies over %.2g healing lengths, so that it needs more than "
+                           "%d elements; a larger Mach number or a shorter gap needs fewer",
+                           scale * up->state.c_u, (int)ELEMENTS_MAX);
     nodes = (size_t)total * (size_t)rule->order + 1;
     out->elements = total;
     out->at = th_alloc((size_t)total + 1, sizeof *out->at);
