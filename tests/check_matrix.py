@@ -109,7 +109,7 @@ else:
             a = scipy.io.mmread(matrix).toarray()
             n = len(a)
             check(f"{name}: square, two unknowns a node", a.shape == (n, n) and n % 2 == 0, a.shape)
-            real = name in ("ring", "walls")
+            real = ends["kind"] != "open"
             check(f"{name}: {'real' if real else 'complex'}", numpy.isrealobj(a) == real)
             # A = J H, J = [0 1; -1 0] for each node: J^T A is symmetric to the last bit
             h = numpy.empty_like(a)

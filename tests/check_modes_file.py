@@ -320,18 +320,19 @@ def check_refused():
         resource.setrlimit(resource.RLIMIT_FSIZE, (10000, 10000))
 
     missing = os.path.join(folder, "missing", "a.h5")
-    for what, path, reason, more in [
-        ("missing folder", missing, "No such file or directory", {}),
-        ("full device", "/dev/full", "No space left on device", {}),
-        ("a folder", folder, "Is a directory", {}),
-        ("a file too large", old, "File too large", {"preexec_fn": little_room}),
+    before = "solve: --modes "  # said before any work
+    for what, path, start, end, more in [
+        ("missing folder", missing, before, "(No such file or directory)", {}),
+        ("full device", "/dev/full", "", "(No space left on device)", {}),
+        ("a folder", folder, before, "a folder, give a file", {}),
+        ("a file too large", old, "", "(File too large)", {"preexec_fn": little_room}),
     ]:
         done = run("solve", case("stable"), "--modes", path, env={"LC_ALL": "C"}, **more)
         check(
             f"{what}: exit 2, one sentence, nothing on standard output",
             done.returncode == 2
-            and done.stderr.startswith("twinhorizon: " + path)
-            and done.stderr.endswith(f"({reason})\n")
+            and done.stderr.startswith("twinhorizon: " + start + path)
+            and done.stderr.endswith(end + "\n")
             and done.stderr.count("\n") == 1
             and done.stdout == "",
             done,

@@ -70,6 +70,10 @@ int cli_usage(const char *format, ...) TH_PRINTF(1, 2);
 th_status cli_check_outputs(const char *command, cli_arguments *arguments,
                             th_error *err) TH_MUST_USE;
 
+/* TH_EINVAL when one of the files that a command puts into a folder is this one. */
+th_status cli_check_folder(const char *folder, const char *const *name, int names, const char *path,
+                           th_error *err) TH_MUST_USE;
+
 /* TH_EINVAL when an output of the command is this file. */
 th_status cli_check_input(const cli_arguments *arguments, const char *path,
                           th_error *err) TH_MUST_USE;
@@ -156,7 +160,8 @@ void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_dat
 
 /* What stands beside an answer: how far a box is from open ends, and for how long a flow that loses
  * atoms is the flow that was solved. Computes, then prints. */
-th_status cli_print_remarks(const th_case *c, const th_solution *s, th_error *err) TH_MUST_USE;
+th_status cli_print_remarks(const th_case *c, const th_flow *flow, const th_solution *s,
+                            th_error *err) TH_MUST_USE;
 
 /* ---- commands, one file each ---------------------------------------------------------------- */
 

@@ -37,6 +37,11 @@ static th_status copy(const char *from, const char *to, th_error *err)
     return st;
 }
 
+th_status cli_spare_case(const th_case *c, const char *folder, th_error *err)
+{
+    return cli_check_folder(folder, taken, (int)(sizeof taken / sizeof *taken), c->path, err);
+}
+
 th_status cli_keep_table(const th_case *c, const char *folder, th_error *err)
 {
     const char *from = c->data != NULL ? th_data_path(c->data) : NULL, *name;

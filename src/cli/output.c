@@ -109,13 +109,29 @@ static th_status check_one(const cli_option *option, th_error *err)
     return TH_OK;
 }
 
-/* Two outputs, or one of them and the metadata of the other, are one file. */
+/* What an output puts beside its name, itself first; each is written as NAME.part before. */
+static const char *const beside[] = {"", ".part", METADATA, METADATA ".part"};
+
+static int names_of(const cli_option *option)
+{
+    return option->use == CLI_TABLE ? 4 : 2;
+}
+
+/* Whether one of the files of an output is this one. */
+static bool writes(const cli_option *option, const char *path, const char *ending)
+{
+    for (int i = 0; i < names_of(option); i++)
+        if (same_file(*option->place, beside[i], path, ending))
+            return true;
+    return false;
+}
+
 static bool clash(const cli_option *a, const cli_option *b)
 {
-    const char *p = *a->place, *q = *b->place;
-
-    return same_file(p, "", q, "") || (a->use == CLI_TABLE && same_file(p, METADATA, q, "")) ||
-           (b->use == CLI_TABLE && same_file(p, "", q, METADATA));
+    for (int i = 0; i < names_of(b); i++)
+        if (writes(a, *b->place, beside[i]))
+            return true;
+    return false;
 }
 
 th_status cli_check_outputs(const char *command, cli_arguments *arguments, th_error *err)
@@ -147,11 +163,26 @@ th_status cli_check_input(const cli_arguments *arguments, const char *path, th_e
     for (int i = 0; i < arguments->outputs; i++) {
         const cli_option *option = arguments->output[i];
 
-        if (same_file(*option->place, "", path, "") ||
-            (option->use == CLI_TABLE && same_file(*option->place, METADATA, path, "")))
+        if (writes(option, path, ""))
             return th_fail(err, TH_EINVAL, "%s %s would write over %s, which is read", option->name,
                            *option->place, path);
     }
+    return TH_OK;
+}
+
+th_status cli_check_folder(const char *folder, const char *const *name, int names, const char *path,
+                           th_error *err)
+{
+    for (int i = 0; i < names; i++)
+        for (size_t k = 0; k < sizeof beside / sizeof *beside; k++) {
+            char own[CLI_PATH_MAX];
+
+            (void)snprintf(own, sizeof own, "%s/%s", folder, name[i]);
+            if (same_file(own, beside[k], path, ""))
+                return th_fail(err, TH_EINVAL,
+                               "%s would be written over by the sweep: %s is its own", path,
+                               name[i]);
+        }
     return TH_OK;
 }
 

@@ -283,7 +283,7 @@ int cli_solve(int argc, char **argv)
         print_all(c, flow, s);
     if (st == TH_OK && !only_table) {
         cli_data_errors_print(c, s, &errors);
-        st = cli_print_remarks(c, s, &err);
+        st = cli_print_remarks(c, flow, s, &err);
     }
     if (st == TH_OK && sensitivity != NULL)
         st = cli_print_sensitivity(c, s, &err);

@@ -106,6 +106,8 @@ static th_status run(const th_case *c, th_sweep_options o, bool resume, const ch
     if (st == TH_OK)
         st = cli_make_folder(folder, err);
     if (st == TH_OK)
+        st = cli_spare_case(c, folder, err);
+    if (st == TH_OK)
         st = th_journal_open(path, c, points, resume, &journal, err);
     if (st == TH_OK) {
         st = cli_keep_table(c, folder, err);

@@ -30,6 +30,9 @@ int cli_report_tables(const cli_counts *counts, const char *folder);
 /* FOLDER/NAME; NULL when memory is short. Release with free. */
 char *cli_join(const char *folder, const char *name);
 
+/* TH_EINVAL when the case file is one of those that a sweep writes into the folder. */
+th_status cli_spare_case(const th_case *c, const char *folder, th_error *err) TH_MUST_USE;
+
 /* Copy the table that a case names into a folder, under its own name; nothing without a table. */
 th_status cli_keep_table(const th_case *c, const char *folder, th_error *err) TH_MUST_USE;
 

@@ -28,6 +28,9 @@ enum { DIPS = 240, RISES = 120 };
 /* Accuracy of the integration when scanning, and of a zero before it is polished. */
 #define SCAN 1e-9
 #define ZERO 1e-10
+/* Steps down to the least |F| between three places, and how near to zero it counts as touching. */
+enum { DESCENT = 30 };
+#define TOUCH 1e-7
 /* A pocket counts as supersonic when this share of it is. */
 #define MOST 0.5
 /* Places in the pocket that are looked at. */
@@ -168,35 +171,74 @@ static place nth(const shot *s, bool rising, int i)
 /* Called for each zero; false ends the search. */
 typedef bool (*taker)(void *ctx, shot *s, const place *at);
 
+/* The zero between two places of opposite signs; false ends the search. */
+static bool take_zero(shot *s, place low, double at_low, place high, taker take, void *ctx)
+{
+    double y[2];
+
+    while (fabs(high.t - low.t) > ZERO / s->k) {
+        place middle = {.t = low.t + (high.t - low.t) / 2, .rising = low.rising};
+        const double m = mismatch(s, &middle);
+
+        if (!(m * at_low > 0))
+            high = middle;
+        else
+            low = middle;
+    }
+    /* rounding decides on which side of the uniform state a good one ends */
+    if ((!shoot(s, &low, NULL, 0, NULL, NULL, y) || !arrives(s, y)) &&
+        (!shoot(s, &high, NULL, 0, NULL, NULL, y) || !arrives(s, y)))
+        return true;
+    return take(ctx, s, &low);
+}
+
+/* Two zeros, or a double one, may hide where |F| is least between neighbours of one sign: go down
+ * to the least by golden section; a flow that touches zero is taken as it is. */
+static bool take_hidden(shot *s, place low, place high, double sign, taker take, void *ctx)
+{
+    const double ratio = 0.61803398874989484820;
+    const place ends[2] = {low, high};
+    place x[2] = {low, low};
+    double f[2];
+
+    x[0].t = high.t - ratio * (high.t - low.t);
+    x[1].t = low.t + ratio * (high.t - low.t);
+    for (int i = 0; i < 2; i++)
+        f[i] = sign * mismatch(s, &x[i]);
+    for (int step = 0; step < DESCENT && f[0] > 0 && f[1] > 0; step++) {
+        const int keep = f[0] < f[1] ? 1 : 0;
+
+        *(keep == 1 ? &high : &low) = x[keep];
+        x[keep] = x[1 - keep];
+        f[keep] = f[1 - keep];
+        x[1 - keep].t =
+            keep == 1 ? high.t - ratio * (high.t - low.t) : low.t + ratio * (high.t - low.t);
+        f[1 - keep] = sign * mismatch(s, &x[1 - keep]);
+    }
+    for (int i = 0; i < 2; i++)
+        if (f[i] <= 0)
+            return take_zero(s, ends[0], sign, x[i], take, ctx) &&
+                   take_zero(s, x[i], -sign, ends[1], take, ctx);
+    return fmin(f[0], f[1]) > TOUCH * s->k * s->k || take(ctx, s, &x[f[0] < f[1] ? 0 : 1]);
+}
+
 static bool zeros_of(shot *s, bool rising, taker take, void *ctx)
 {
     const int count = rising ? RISES : DIPS;
-    place before = nth(s, rising, 0);
-    double f = mismatch(s, &before);
+    place at[3] = {{0, rising}, {0, rising}, {0, rising}};
+    double f[3] = {0, 0, 0};
 
-    for (int i = 1; i < count; i++) {
-        place here = nth(s, rising, i), low = before, high = here;
-        double g = mismatch(s, &here), at_low = f;
-        double y[2];
-
-        before = here;
-        f = g;
-        if (!(at_low * g <= 0))
-            continue;
-        while (fabs(high.t - low.t) > ZERO / s->k) {
-            place middle = {.t = low.t + (high.t - low.t) / 2, .rising = rising};
-            const double m = mismatch(s, &middle);
-
-            if (!(m * at_low > 0))
-                high = middle;
-            else
-                low = middle;
-        }
-        /* rounding decides on which side of the uniform state a good one ends */
-        if ((!shoot(s, &low, NULL, 0, NULL, NULL, y) || !arrives(s, y)) &&
-            (!shoot(s, &high, NULL, 0, NULL, NULL, y) || !arrives(s, y)))
-            continue;
-        if (!take(ctx, s, &low))
+    for (int i = 0; i < count; i++) {
+        at[0] = at[1];
+        at[1] = at[2];
+        f[0] = f[1];
+        f[1] = f[2];
+        at[2] = nth(s, rising, i);
+        f[2] = mismatch(s, &at[2]);
+        if (i > 0 && f[1] * f[2] <= 0 && !take_zero(s, at[1], f[1], at[2], take, ctx))
+            return false;
+        if (i > 1 && f[0] * f[1] > 0 && f[1] * f[2] > 0 && fabs(f[1]) <= fabs(f[0]) &&
+            fabs(f[1]) <= fabs(f[2]) && !take_hidden(s, at[0], at[2], f[1] > 0 ? 1 : -1, take, ctx))
             return false;
     }
     return true;

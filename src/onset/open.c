@@ -32,6 +32,8 @@ enum { CHANGES_MAX = 100000 };
 /* A root is found when the next step is below this part of its length; the step is made still, and
  * what is left of it is smaller by the error of the slope. */
 #define STEP_SMALL 1e-12
+/* An angle farther than this from its multiple of pi where the steps have ended is a jump. */
+#define JUMP 1e-5
 /* Error of A that is taken for its noise before one is known; measured on smooth edges. */
 #define ANGLE_NOISE 1e-12
 /* Rounds for one root: twelve secants, and a hundred of which every second one halves (root.c). */
@@ -136,6 +138,12 @@ static th_status refine(const search *w, int order, double guess, th_root *root,
         next = th_root_next(root, x, now.angle - target);
         if (fabs(root->step) <= STEP_SMALL * x ||
             (round > 0 && fabs(now.angle - target) <= now.error)) {
+            if (fabs(now.angle - target) > JUMP + now.error)
+                return th_fail(
+                    err, TH_EUNDECIDED,
+                    "onset: the flow jumps at %.9g, beyond it another stationary flow is "
+                    "taken, so there is no switch-on of order %d",
+                    x, order);
             *out = (th_onset){.order = order,
                               .gap = x - root->step,
                               .gap_error =
