@@ -273,7 +273,7 @@ static int census_at(th_flow_setup setup, double gap)
     th_census census = {0};
     th_error err = {0};
 
-    setup.value[th_onset_key(setup.shape)] = gap;
+    setup.value[th_shape_length(setup.shape)] = gap;
     if (th_flow_build(&setup, &flow, &err) != TH_OK ||
         th_matching_create(flow, th_flow_band_limit(flow), TH_MATCHING_USUAL, &matching, &err) !=
             TH_OK ||
@@ -307,7 +307,7 @@ static th_solution *solve_at(th_flow_setup setup, double gap)
     th_flow *flow = NULL;
     th_error err = {0};
 
-    setup.value[th_onset_key(setup.shape)] = gap;
+    setup.value[th_shape_length(setup.shape)] = gap;
     if (th_flow_build(&setup, &flow, &err) != TH_OK || th_solve(flow, &options, &s, &err) != TH_OK)
         fail_msg("gap %.15g: %s", gap, err.text);
     th_flow_destroy(flow);
@@ -639,11 +639,12 @@ static void test_errors(void **state)
     assert_int_equal(th_onset_find(NULL, NULL, &list, NULL), TH_EINVAL);
     assert_int_equal(th_onset_map(NULL, NULL, NULL, NULL, NULL), TH_EINVAL);
     assert_int_equal(th_onset_points(NULL, NULL, NULL), TH_EINVAL);
-    assert_int_equal(th_onset_key(NULL), -1);
-    assert_int_equal(th_onset_key(&pointlike), -1);
-    assert_string_equal(th_shape_find("sech")->key[th_onset_key(th_shape_find("sech"))].key,
+    assert_int_equal(th_shape_length(NULL), -1);
+    assert_int_equal(th_shape_length(&pointlike), -1);
+    assert_string_equal(th_shape_find("sech")->key[th_shape_length(th_shape_find("sech"))].key,
                         "width");
-    assert_string_equal(th_shape_find("tanh")->key[th_onset_key(th_shape_find("tanh"))].key, "gap");
+    assert_string_equal(th_shape_find("tanh")->key[th_shape_length(th_shape_find("tanh"))].key,
+                        "gap");
     assert_true(th_onset_upto(NULL) == 0);
     assert_string_equal(th_onset_kind_text(TH_ONSET_GROWING), "growing");
     assert_string_equal(th_onset_kind_text(TH_ONSET_PAIR), "pair");

@@ -47,13 +47,24 @@ const th_shape_key *th_axis_key(const th_shape *shape, int key);
 /** Put a value of an axis into a setup. */
 void th_axis_set(int key, double value, th_flow_setup *setup);
 
+/* Contrast that counts as visible unless told; common practice, no source. */
+#define TH_VISIBILITY 0.1
+
 /* [plan], in SI or reduced units as the case; 0 when absent. */
 typedef struct {
     bool present; /* a [plan] section or key was given, the section may be empty */
     double hold_time, lifetime, temperature; /* reduced units (temperature: k_B T) */
     bool has_ramp;
     double ramp_from, ramp_to, ramp_time; /* gap_ramp, reduced units */
-    double tolerance[TH_SHAPE_KEYS_MAX];  /* relative, by shape key; 0 when absent */
+    bool has_range;
+    double range_from, range_to; /* gap_range, reduced units, from < to */
+    double resolution;           /* smallest period that the imaging resolves, reduced length */
+    double visibility;           /* rms density contrast that can be seen; TH_VISIBILITY when
+                                    not given */
+    double transverse;           /* transverse_frequency, reduced (angular) */
+    int samples;                 /* of the tolerances; 0 when not given */
+    int seed;                    /* of the samples */
+    double tolerance[TH_SHAPE_KEYS_MAX]; /* relative, by shape key; 0 when absent */
 } th_plan_request;
 
 typedef struct {

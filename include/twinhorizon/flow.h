@@ -230,6 +230,10 @@ int th_shape_count(void);
 const th_shape *th_shape_at(int i);
 const th_shape *th_shape_find(const char *name); /* NULL when unknown */
 
+/** Index of the key of a shape that is the length of its pocket: gap if it has one, else width,
+ * else stretch. -1 when it has none of them. */
+int th_shape_length(const th_shape *shape);
+
 /* A shape with its values: everything needed to build the flow of one configuration. */
 struct th_flow_setup {
     const th_shape *shape;

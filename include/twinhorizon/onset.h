@@ -52,12 +52,6 @@ typedef struct {
     int threads; /* >= 1; no result depends on it */
 } th_onset_options;
 
-/**
- * Index of the key of a shape that is the length of its pocket: gap if it has one, else width.
- * -1 when it has neither.
- */
-int th_onset_key(const th_shape *shape);
-
 /** How far a case is searched unless told: to the largest value of its axis over the length key,
  * else to four times the base value. 0 when the shape has no length key. */
 double th_onset_upto(const th_case *c);

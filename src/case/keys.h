@@ -53,7 +53,22 @@
     X(TEMPERATURE, "plan", "temperature", TH_DIM_TEMPERATURE,                                      \
       "temperature of the cloud (reduced: k_B T); > 0")                                            \
     X(GAP_RAMP, "plan", "gap_ramp", TH_DIM_LENGTH,                                                 \
-      "`A to B in T`: the gap changes from A to B in the time T")                                  \
+      "`A to B in T`: the length of the pocket (gap; width, stretch) goes from A to B in a time "  \
+      "T")                                                                                         \
+    X(GAP_RANGE, "plan", "gap_range", TH_DIM_LENGTH,                                               \
+      "`A to B`: lengths among which the best one is looked for, default: the axis of [sweep] "    \
+      "over it, else from half to twice the value in [flow]")                                      \
+    X(RESOLUTION, "plan", "resolution", TH_DIM_LENGTH,                                             \
+      "smallest period of a density ripple that the imaging resolves; > 0")                        \
+    X(VISIBILITY, "plan", "visibility", TH_DIM_NUMBER,                                             \
+      "rms density contrast that can be told from noise, default 0.1; > 0 and < 1, may be in %")   \
+    X(TRANSVERSE, "plan", "transverse_frequency", TH_DIM_RATE,                                     \
+      "frequency of the transverse trap, for the checks of one dimension; > 0")                    \
+    X(SAMPLES, "plan", "samples", TH_DIM_NUMBER,                                                   \
+      "how many flows are tried within the tolerances, default 1024; a multiple of 8, 64 to "      \
+      "1000000")                                                                                   \
+    X(SEED, "plan", "seed", TH_DIM_NUMBER,                                                         \
+      "of the samples: same seed, same numbers; default 1, a whole number >= 0")                   \
     X(TOLERANCE, "plan", "tolerance.KEY", TH_DIM_NUMBER,                                           \
       "how far a key of the shape may drift, in % of its value; above 0 % and below 100 %")
 

@@ -53,6 +53,13 @@ typedef struct {
 int cli_read(const char *command, const char *summary, int argc, char **argv,
              const cli_option *option, int options, cli_arguments *out);
 
+/* A whole number from low to high, `fallback` when the option is absent (text NULL). */
+th_status cli_whole(const char *command, const char *name, const char *text, int low, int high,
+                    int fallback, int *out, th_error *err) TH_MUST_USE;
+
+/* The same of --threads: one for each processor when it is absent. */
+th_status cli_threads(const char *command, const char *text, int *out, th_error *err) TH_MUST_USE;
+
 /* Read the case. Files that would be written over it or over its table are refused. */
 th_status cli_read_case(const cli_arguments *arguments, th_case **out, th_error *err) TH_MUST_USE;
 
@@ -170,5 +177,6 @@ int cli_flow(int argc, char **argv);
 int cli_sweep(int argc, char **argv);
 int cli_onset(int argc, char **argv);
 int cli_merge(int argc, char **argv);
+int cli_plan(int argc, char **argv);
 
 #endif

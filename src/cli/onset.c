@@ -8,7 +8,6 @@
 #include <limits.h>
 #include <string.h>
 #include <twinhorizon/onset.h>
-#include <unistd.h>
 
 #include "cli.h"
 
@@ -250,25 +249,9 @@ static th_status take(void *ctx, const th_onset_point *point, th_error *err)
     return w->table != NULL ? put_rows(w, point, err) : TH_OK;
 }
 
-/* A whole number >= low from the command line, `fallback` when the option is absent. */
-static th_status whole(const char *name, const char *text, int low, int fallback, int *out,
-                       th_error *err)
-{
-    double value;
-
-    *out = fallback;
-    if (text == NULL)
-        return TH_OK;
-    if (th_number_read(text, &value, NULL) != TH_OK || !(value >= low) || !(value <= INT_MAX) ||
-        value != floor(value))
-        return th_fail(err, TH_EINVAL, "onset: %s %s, want a whole number >= %d", name, text, low);
-    *out = (int)value;
-    return TH_OK;
-}
-
 static th_status read_upto(const th_case *c, const char *text, double *out, th_error *err)
 {
-    const int key = th_onset_key(c->setup.shape);
+    const int key = th_shape_length(c->setup.shape);
     const th_dimension dimension = key >= 0 ? c->setup.shape->key[key].dimension : TH_DIM_LENGTH;
     const bool bare = c->scale.system == TH_SYSTEM_REDUCED || dimension == TH_DIM_NUMBER;
     th_error why = {0};
@@ -288,7 +271,7 @@ static th_status read_upto(const th_case *c, const char *text, double *out, th_e
 
 static th_status run(state *w, const th_onset_options *options, const char *csv, th_error *err)
 {
-    const int key = th_onset_key(w->c->setup.shape);
+    const int key = th_shape_length(w->c->setup.shape);
     th_status st;
 
     if (key < 0)
@@ -330,7 +313,6 @@ int cli_onset(int argc, char **argv)
          "before it; - for standard output",
          &csv, CLI_TABLE},
     };
-    const long processors = sysconf(_SC_NPROCESSORS_ONLN);
     th_onset_options options = {0};
     cli_arguments arguments;
     state w = {0};
@@ -348,12 +330,12 @@ int cli_onset(int argc, char **argv)
     st = cli_read_case(&arguments, &c, &err);
     w.c = c;
     if (st == TH_OK)
-        st = whole("--orders", orders, 1, 0, &options.orders, &err);
+        st = cli_whole("onset", "--orders", orders, 1, INT_MAX, 0, &options.orders, &err);
     if (st == TH_OK)
-        st = whole("--samples", samples, 2, TH_ONSET_SAMPLES, &options.samples, &err);
+        st = cli_whole("onset", "--samples", samples, 2, INT_MAX, TH_ONSET_SAMPLES,
+                       &options.samples, &err);
     if (st == TH_OK)
-        st = whole("--threads", threads, 1, processors > 0 ? (int)processors : 1, &options.threads,
-                   &err);
+        st = cli_threads("onset", threads, &options.threads, &err);
     if (st == TH_OK)
         st = read_upto(c, upto, &options.upto, &err);
     if (st == TH_OK)

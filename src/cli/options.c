@@ -2,10 +2,16 @@
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
  * Command lines of the commands, and failures as exit codes. */
+#include <limits.h>
+#include <math.h>
 #include <stdarg.h>
 #include <string.h>
+#include <unistd.h>
 
 #include "cli.h"
+
+/* More threads than any machine has cores. */
+enum { THREADS_MAX = 1024 };
 
 /* One line, whatever words of the user it holds: control characters become \xHH. */
 static void complain(const char *text)
@@ -126,6 +132,35 @@ int cli_read(const char *command, const char *summary, int argc, char **argv,
             out->output[out->outputs++] = &option[i];
     }
     return cli_check_outputs(command, out, &err) == TH_OK ? CLI_DONE : cli_failed(&err);
+}
+
+th_status cli_whole(const char *command, const char *name, const char *text, int low, int high,
+                    int fallback, int *out, th_error *err)
+{
+    double value;
+
+    *out = fallback;
+    if (text == NULL)
+        return TH_OK;
+    if (th_number_read(text, &value, NULL) != TH_OK || !(value >= low) || !(value <= high) ||
+        value != floor(value))
+        return high == INT_MAX
+                   ? th_fail(err, TH_EINVAL, "%s: %s %s, want a whole number >= %d", command, name,
+                             text, low)
+                   : th_fail(err, TH_EINVAL, "%s: %s %s, want a whole number from %d to %d",
+                             command, name, text, low, high);
+    *out = (int)value;
+    return TH_OK;
+}
+
+th_status cli_threads(const char *command, const char *text, int *out, th_error *err)
+{
+    const long processors = sysconf(_SC_NPROCESSORS_ONLN);
+    const int one_each = processors > THREADS_MAX ? THREADS_MAX
+                         : processors > 0         ? (int)processors
+                                                  : 1;
+
+    return cli_whole(command, "--threads", text, 1, THREADS_MAX, one_each, out, err);
 }
 
 th_status cli_read_case(const cli_arguments *arguments, th_case **out, th_error *err)

@@ -52,19 +52,6 @@ static bool read_part(const char *text, int *part, int *parts)
            *parts <= 1000000;
 }
 
-static bool read_threads(const char *text, int *threads)
-{
-    char *end;
-    long value;
-
-    errno = 0;
-    value = strtol(text, &end, 10);
-    if (errno != 0 || end == text || *end != '\0' || value < 1 || value > 1024)
-        return false;
-    *threads = (int)value;
-    return true;
-}
-
 static void done(void *ctx, const th_point *point)
 {
     cli_progress *progress = ctx;
@@ -161,11 +148,8 @@ int cli_sweep(int argc, char **argv)
 
     if (code != CLI_DONE)
         return code < 0 ? CLI_DONE : code;
-    o.threads = (int)sysconf(_SC_NPROCESSORS_ONLN);
-    if (o.threads < 1)
-        o.threads = 1;
-    if (threads != NULL && !read_threads(threads, &o.threads))
-        return cli_usage("sweep: --threads %s: want a whole number from 1 to 1024", threads);
+    if (cli_threads("sweep", threads, &o.threads, &err) != TH_OK)
+        return cli_failed(&err);
     if (part != NULL && !read_part(part, &o.part, &o.parts))
         return cli_usage("sweep: --part %s: want K/N with 1 <= K <= N", part);
     path = cli_join(folder, "journal");

@@ -22,6 +22,9 @@ static const th_shape *const table[] = {
     &th_shape_step,     &th_shape_tanh,       &th_shape_sech,      &th_shape_well,
     &th_shape_barriers, &th_shape_continuity, &th_shape_potential, &th_shape_table};
 
+/* Keys that are the length of the pocket, the first that a shape has counts. */
+static const char *const length_key[] = {"gap", "width", "stretch"};
+
 int th_shape_count(void)
 {
     return (int)(sizeof table / sizeof *table);
@@ -38,6 +41,15 @@ const th_shape *th_shape_find(const char *name)
         if (strcmp(table[i]->name, name) == 0)
             return table[i];
     return NULL;
+}
+
+int th_shape_length(const th_shape *shape)
+{
+    for (size_t k = 0; shape != NULL && k < sizeof length_key / sizeof *length_key; k++)
+        for (int i = 0; i < shape->keys; i++)
+            if (strcmp(shape->key[i].key, length_key[k]) == 0)
+                return i;
+    return -1;
 }
 
 double th_tail_reach(double relative, double width, double sound)

@@ -315,7 +315,7 @@ th_status th_onset_closed(const th_flow_setup *setup, const th_onset_options *op
 {
     const int spaces = options->samples > 0 ? options->samples : TH_ONSET_SAMPLES;
     search w = {.setup = setup,
-                .key = th_onset_key(setup->shape),
+                .key = th_shape_length(setup->shape),
                 .spacing = options->upto / spaces,
                 .samples = spaces + 1,
                 .out = out};

@@ -135,7 +135,7 @@ th_status th_onset_points(const th_case *c, long *points, th_error *err)
 
     if (c == NULL || points == NULL)
         return th_fail(err, TH_EINVAL, "onset: want a case and a place for the result");
-    key = th_onset_key(c->setup.shape);
+    key = th_shape_length(c->setup.shape);
     for (int a = 0; a < c->axes; a++) {
         product *= c->axis[a].key == key ? 1 : c->axis[a].count;
         if (product > INT_MAX)
@@ -157,7 +157,7 @@ th_status th_onset_map(const th_case *c, const th_onset_options *options, th_ons
     if (c == NULL || options == NULL || sink == NULL)
         return th_fail(err, TH_EINVAL, "onset: want a case, options and a sink");
     m.options = *options;
-    m.key = th_onset_key(c->setup.shape);
+    m.key = th_shape_length(c->setup.shape);
     if (m.options.upto == 0 && m.key >= 0)
         m.options.upto = th_onset_upto(c);
     st = th_onset_check(c->setup.shape, &m.options, err);

@@ -1,20 +1,16 @@
 /* twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
  * SPDX-License-Identifier: GPL-3.0-or-later
  *
- * Switch-on lengths of one setup: the length key, the rules of the options, the list. In: a setup.
+ * Switch-on lengths of one setup: the rules of the options, the list. In: a setup.
  * Out: a list, from open.c or closed.c as the ends demand. May call: these, case, flow, status.
- * To treat another key as the length of a shape's pocket add its name to `length_key`.
  * Proved by tests/test_onset.c. */
 #include "twinhorizon/onset.h"
 
 #include <math.h>
 #include <stdlib.h>
-#include <string.h>
 
 #include "onset/inside.h"
 
-/* Keys that are the length of the pocket, the first that a shape has counts. */
-static const char *const length_key[] = {"gap", "width", "stretch"};
 /* A search without any hint goes to this multiple of the base value: a pocket that grows one mode
  * then shows a handful. */
 #define UPTO_TIMES 4
@@ -26,18 +22,9 @@ const char *th_onset_kind_text(th_onset_kind kind)
     return kind == TH_ONSET_PAIR ? "pair" : "growing";
 }
 
-int th_onset_key(const th_shape *shape)
-{
-    for (size_t k = 0; shape != NULL && k < sizeof length_key / sizeof *length_key; k++)
-        for (int i = 0; i < shape->keys; i++)
-            if (strcmp(shape->key[i].key, length_key[k]) == 0)
-                return i;
-    return -1;
-}
-
 double th_onset_upto(const th_case *c)
 {
-    const int key = c != NULL ? th_onset_key(c->setup.shape) : -1;
+    const int key = c != NULL ? th_shape_length(c->setup.shape) : -1;
     double upto = 0;
 
     if (key < 0)
@@ -83,7 +70,7 @@ th_flow_setup th_onset_setup(const th_flow_setup *setup, int key, double length)
 
 th_status th_onset_check(const th_shape *shape, const th_onset_options *options, th_error *err)
 {
-    if (th_onset_key(shape) < 0)
+    if (th_shape_length(shape) < 0)
         return th_fail(err, TH_EINVAL, "onset: shape %s has no key that is a pocket's length",
                        shape != NULL ? shape->name : "NULL");
     if (!(options->upto > 0) || !isfinite(options->upto))

@@ -245,7 +245,7 @@ void th_trail_clear(th_trail *trail)
 th_status th_onset_open(const th_flow_setup *setup, const th_onset_options *options, double place,
                         th_trail *trail, th_onset_list *out, th_error *err)
 {
-    const search w = {setup, th_onset_key(setup->shape)};
+    const search w = {setup, th_shape_length(setup->shape)};
     const th_trail nothing = {0}, *known = trail != NULL ? trail : &nothing;
     sample low, top;
     double *slopes = NULL, slope, start = 0;
