@@ -4,7 +4,8 @@
  * The answer at one point of a sweep. In: a configuration, the two points before it on its line.
  * Out: th_point. Calls flow, matching, census, index, modes.
  * Roots are predicted by linear continuation and polished. They are believed when their number,
- * both signs of Re omega counted, is what census and static index say; else the global finder
+ * both signs of Re omega counted, is what census and static index say (to th_point_follow the index
+ * is enough: it bounds the number from above); else the global finder
  * looks for all, and where that is not enough the full solution with matrices does.
  * Proof: tests/test_sweep.c. */
 #include "twinhorizon/point.h"
@@ -35,6 +36,8 @@ typedef struct {
     th_matching *usual, *fine;
     th_census census;
     bool on_switch; /* the static index cannot decide: an eigenvalue of K is zero to rounding */
+    bool countable; /* it could be asked at all */
+    bool brief;     /* the index may settle the answer without the census */
     th_point *point;
 } answer;
 
@@ -112,17 +115,32 @@ static void count_modes(answer *a)
     p->census = a->census.growing + (slow <= a->census.slow ? slow : 0);
 }
 
+static bool all_grow(const th_point *p)
+{
+    for (int i = 0; i < p->count; i++)
+        if (p->mode[i].label != TH_LABEL_UNSTABLE)
+            return false;
+    return true;
+}
+
 /* Do all counts agree? */
 static bool settled(answer *a)
 {
     const th_point *p = a->point;
 
     count_modes(a);
-    for (int i = 0; i < p->count; i++)
-        if (p->mode[i].label != TH_LABEL_UNSTABLE)
-            return false;
-    return p->census_known && !a->on_switch && p->unstable == p->census &&
+    return all_grow(p) && p->census_known && !a->on_switch && p->unstable == p->census &&
            (!p->index_known || p->unstable == p->index);
+}
+
+/* No more modes grow than the index says: with as many at hand none is missing, and only growing
+ * ones were taken. */
+static bool settled_by_index(answer *a)
+{
+    const th_point *p = a->point;
+
+    count_modes(a);
+    return a->brief && all_grow(p) && p->index_known && !a->on_switch && p->unstable == p->index;
 }
 
 static th_status follow(answer *a, const th_point *const previous[2], th_error *err)
@@ -194,27 +212,52 @@ done:
     return st;
 }
 
-/* Static index and census; what they cannot decide is left to the full solution. */
-static th_status count(answer *a, th_error *err)
+/* A count that cannot decide leaves the answer to the full solution; shortage of memory and bugs
+ * are failures. */
+static th_status grave(th_status st, const th_error *why, th_error *err)
 {
-    th_point *p = a->point;
+    if (st != TH_ENOMEM && st != TH_EBUG)
+        return TH_OK;
+    if (err != NULL)
+        *err = *why;
+    return st;
+}
+
+static th_status count_index(answer *a, th_error *err)
+{
     th_index index;
     th_error why;
-    th_status st = th_index_open(a->flow, &index, &why);
+    const th_status st = th_index_open(a->flow, &index, &why);
 
     a->on_switch = st == TH_EUNDECIDED;
-    p->index_known = st == TH_OK;
-    p->index = st == TH_OK ? index.count : 0;
-    if (st == TH_OK || st == TH_EUNDECIDED || st == TH_ENONE) {
-        st = th_census_count(a->flow, a->usual, a->omega_top, &a->census, &why);
-        p->census_known = st == TH_OK;
-    }
-    if (st == TH_ENOMEM || st == TH_EBUG) {
-        if (err != NULL)
-            *err = why;
-        return st;
-    }
-    return TH_OK;
+    a->point->index_known = st == TH_OK;
+    a->point->index = st == TH_OK ? index.count : 0;
+    a->countable = st == TH_OK || st == TH_EUNDECIDED || st == TH_ENONE;
+    return grave(st, &why, err);
+}
+
+static th_status count_census(answer *a, th_error *err)
+{
+    th_error why;
+    th_status st;
+
+    if (!a->countable)
+        return TH_OK;
+    st = th_census_count(a->flow, a->usual, a->omega_top, &a->census, &why);
+    a->point->census_known = st == TH_OK;
+    return grave(st, &why, err);
+}
+
+/* Sort the modes and write down who stands behind them. */
+static void finish(th_point *p)
+{
+    const unsigned by = (p->census_known ? TH_BY_CENSUS : 0u) | (p->index_known ? TH_BY_INDEX : 0u);
+
+    if (p->count > 1) /* in place, where qsort may ask for memory */
+        gsl_heapsort(p->mode, (size_t)p->count, sizeof *p->mode, by_growth);
+    for (int i = 0; i < p->count; i++)
+        p->mode[i].confirmed |= by;
+    p->state = TH_POINT_OK;
 }
 
 static th_status answer_open(answer *a, double accuracy, const th_point *const previous[2],
@@ -225,30 +268,32 @@ static th_status answer_open(answer *a, double accuracy, const th_point *const p
     if (st == TH_OK)
         st = th_matching_create(a->flow, a->omega_top, TH_MATCHING_FINE, &a->fine, err);
     if (st == TH_OK)
-        st = count(a, err);
+        st = count_index(a, err);
     if (st == TH_OK)
         st = follow(a, previous, err);
+    if (st == TH_OK && settled_by_index(a)) {
+        finish(a->point);
+        return TH_OK;
+    }
+    if (st == TH_OK)
+        st = count_census(a, err);
     if (st == TH_OK && !settled(a))
         st = find_all(a, err);
     if (st != TH_OK)
         return st;
     if (!settled(a))
         return solve_fully(a, accuracy, err);
-    if (a->point->count > 1) /* in place, where qsort may ask for memory */
-        gsl_heapsort(a->point->mode, (size_t)a->point->count, sizeof *a->point->mode, by_growth);
-    for (int i = 0; i < a->point->count; i++)
-        a->point->mode[i].confirmed |= TH_BY_CENSUS | (a->point->index_known ? TH_BY_INDEX : 0u);
-    a->point->state = TH_POINT_OK;
+    finish(a->point);
     return TH_OK;
 }
 
-th_status th_point_answer(const th_flow_setup *setup, double accuracy,
-                          const th_point *const previous[2], th_point *point, th_error *err)
+static th_status answer_point(const th_flow_setup *setup, double accuracy, bool brief,
+                              const th_point *const previous[2], th_point *point, th_error *err)
 {
     const long number = point->number;
     th_flow *flow = NULL;
     th_error why = {0};
-    answer a = {.point = point};
+    answer a = {.point = point, .brief = brief};
     th_status st = th_flow_build(setup, &flow, &why);
 
     point->count = 0;
@@ -284,4 +329,16 @@ th_status th_point_answer(const th_flow_setup *setup, double accuracy,
     (void)snprintf(point->message, sizeof point->message, "%.*s", (int)sizeof point->message - 1,
                    why.text);
     return TH_OK;
+}
+
+th_status th_point_answer(const th_flow_setup *setup, double accuracy,
+                          const th_point *const previous[2], th_point *point, th_error *err)
+{
+    return answer_point(setup, accuracy, false, previous, point, err);
+}
+
+th_status th_point_follow(const th_flow_setup *setup, double accuracy,
+                          const th_point *const previous[2], th_point *point, th_error *err)
+{
+    return answer_point(setup, accuracy, true, previous, point, err);
 }
