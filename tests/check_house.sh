@@ -43,8 +43,13 @@ point:    modes
 journal:  case point
 parallel: alloc status
 sweep:    journal parallel buffer io_error version
+track:    sweep
+tolerance: point sensitivity parallel
+semiclassics: flow dispersion
+pattern:  profile dispersion
+validity: flow
 onset:    modes case parallel
-cli:      sweep onset profile sensitivity uncertainty count_distance table version
+cli:      sweep onset profile sensitivity uncertainty count_distance table version track tolerance semiclassics pattern validity seed
 '
 
 number=0 bad=0
