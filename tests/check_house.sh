@@ -45,7 +45,7 @@ parallel: alloc status
 sweep:    journal parallel buffer io_error version
 track:    sweep
 tolerance: point sensitivity parallel
-semiclassics: flow dispersion
+semiclassics: flow
 pattern:  profile dispersion
 validity: flow
 onset:    modes case parallel

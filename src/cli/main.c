@@ -21,6 +21,7 @@ static const struct {
     {"merge", "tables of a sweep that was run in parts", cli_merge},
     {"onset", "pocket lengths at which modes switch on, alone or over the axes of a case",
      cli_onset},
+    {"plan", "an experiment: growth within the hold, seeds, ramps, tolerances, limits", cli_plan},
     {"flow", "the stationary flow: horizons, pockets, the potential it needs", cli_flow},
 };
 enum { COMMANDS = sizeof command / sizeof command[0] };
