@@ -65,8 +65,9 @@ static const th_check rule[TH_CHECKS] = {
     [TH_CHECK_LINEAR] = {.name = "linear",
                          .title = "expected contrast at the end of the hold",
                          .limit = 0.5,
-                         .fails = "the ripple saturates before: amplitudes, and frequencies late "
-                                  "in the hold, are beyond linear theory"},
+                         .fails =
+                             "the ripple is no longer small before the hold ends: what it does "
+                             "then, saturation first, is beyond linear theory"},
 };
 
 typedef struct {

@@ -101,7 +101,8 @@ static void test_reduced(void **state)
     assert_true(c->setup.density == 1.0 && !c->density_given);
     assert_true(c->accuracy == 1e-9);
     assert_int_equal(c->axes, 0);
-    assert_false(c->plan.present);
+    assert_false(c->plan.present || c->plan.has_ramp || c->plan.has_range);
+    assert_true(c->plan.visibility == TH_VISIBILITY && c->plan.seed == 1 && c->plan.samples == 0);
     th_case_destroy(c);
     th_case_destroy(NULL);
 
@@ -139,6 +140,9 @@ static void test_si(void **state)
     th_case *c = read_good(STEP_SI "density = 30 /um\n[plan]\nhold_time = 100 ms\n"
                                    "lifetime = 2 s\ntemperature = 2 nK\n"
                                    "gap_ramp = 5 um to 20 um in 60 ms\n"
+                                   "gap_range = 2 um to 14 um\nresolution = 1.5 um\n"
+                                   "visibility = 25 %\ntransverse_frequency = 2 kHz\n"
+                                   "samples = 128\nseed = 7\n"
                                    "tolerance.sound_pocket = 3 %\ntolerance.gap = 0.5%\n");
 
     (void)state;
@@ -158,6 +162,14 @@ static void test_si(void **state)
     assert_close(c->plan.ramp_from, 5e-6 / length, 1e-15);
     assert_close(c->plan.ramp_to, 20e-6 / length, 1e-15);
     assert_close(c->plan.ramp_time, 60e-3 / time, 1e-15);
+    assert_true(c->plan.has_range);
+    assert_close(c->plan.range_from, 2e-6 / length, 1e-15);
+    assert_close(c->plan.range_to, 14e-6 / length, 1e-15);
+    assert_close(c->plan.resolution, 1.5e-6 / length, 1e-15);
+    assert_close(c->plan.visibility, 0.25, 1e-15);
+    assert_close(c->plan.transverse, 2 * 3.14159265358979323846 * 2000 * time, 1e-14);
+    assert_int_equal(c->plan.samples, 128);
+    assert_int_equal(c->plan.seed, 7);
     for (int i = 0; i < c->setup.shape->keys; ++i) {
         const char *key = c->setup.shape->key[i].key;
         double want = strcmp(key, "sound_pocket") == 0 ? 0.03

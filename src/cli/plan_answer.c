@@ -87,7 +87,7 @@ static void print_tell(const cli_findings *p, const cli_view *v)
         }
         printf("mode %d from the static undulation: %s", i + 1,
                !t->imaged                      ? "NO, its ripple is finer than the imaging"
-               : !t->growth                    ? "NO, it hardly grows within the hold"
+               : !t->growth                    ? "hardly, it grows by less than e in the second half of the hold"
                : ways == 1                     ? "by its growth only"
                : t->frequency && t->wavenumber ? "yes, by growth, motion and wave number"
                : t->frequency                  ? "yes, by growth and motion"

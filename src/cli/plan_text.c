@@ -38,6 +38,23 @@ static const char *period(const cli_view *v, double wavenumber, double resolutio
     return buffer;
 }
 
+/* What tells a mode from the static undulation: "growth, motion, wave number". */
+static const char *told_by(const cli_findings *p, const cli_plan_mode *m, char words[CLI_NUMBER])
+{
+    const th_pattern_tell *t = &m->tell;
+
+    if (!m->part.known || p->c->plan.hold_time == 0.0)
+        return "-";
+    if (!t->imaged)
+        return "nothing: too fine for the imaging";
+    (void)snprintf(words, CLI_NUMBER, "%s%s%s", t->growth ? "growth, " : "",
+                   t->frequency ? "motion, " : "", t->wavenumber ? "wave number, " : "");
+    if (words[0] == '\0')
+        return "nothing";
+    words[strlen(words) - 2] = '\0';
+    return words;
+}
+
 static void print_modes(const cli_findings *p, const cli_view *v)
 {
     const th_plan_request *ask = &p->c->plan;
@@ -45,19 +62,20 @@ static void print_modes(const cli_findings *p, const cli_view *v)
     int pockets;
 
     if (p->growing > 0)
-        printf("\n%-11s %4s %13s %12s %8s %8s %9s %9s %9s %9s %6s\n", "Modes", "mode",
+        printf("\n%-11s %4s %13s %12s %8s %8s %9s %9s %9s %9s %6s  %s\n", "Modes", "mode",
                v->si ? "frequency/Hz" : "frequency", v->si ? "e-fold/ms" : "e-fold", "in hold",
                "in life", v->si ? "period/um" : "period", v->si ? "mm/s" : "speed",
-               v->si ? "upstr./um" : "upstream", v->si ? "downs./um" : "downstr.", "single");
+               v->si ? "upstr./um" : "upstream", v->si ? "downs./um" : "downstr.", "single",
+               "told apart by");
     for (int i = 0; i < p->growing && i < ROWS; i++) {
         const cli_plan_mode *m = &p->mode[i];
         const double re = m->mode->omega_re, im = m->mode->omega_im;
         const bool moves = m->part.known && re > 0.0;
         const th_pattern_side *up = &m->pattern.upstream, *down = &m->pattern.downstream;
         char hold[CLI_NUMBER], life[CLI_NUMBER], inside[CLI_NUMBER], speed[CLI_NUMBER];
-        char left[CLI_NUMBER], right[CLI_NUMBER], frequency[CLI_NUMBER];
+        char left[CLI_NUMBER], right[CLI_NUMBER], frequency[CLI_NUMBER], words[CLI_NUMBER];
 
-        printf("%11s %4d %13s %12.5g %8s %8s %9s %9s %9s %9s %5.0f%%\n", "", i + 1,
+        printf("%11s %4d %13s %12.5g %8s %8s %9s %9s %9s %9s %5.0f%%  %s\n", "", i + 1,
                cli_number(re * v->frequency, m->mode->omega_error * v->frequency, frequency),
                v->time / im, cell(ask->hold_time > 0.0, im * ask->hold_time, hold),
                cell(ask->lifetime > 0.0, im * ask->lifetime, life),
@@ -67,7 +85,7 @@ static void print_modes(const cli_findings *p, const cli_view *v)
                     re / m->pattern.wavenumber * v->speed, speed),
                cell(moves && up->known, 2.0 * M_PI / fabs(up->wavenumber) * v->length, left),
                cell(moves && down->known, 2.0 * M_PI / fabs(down->wavenumber) * v->length, right),
-               100.0 * m->pattern.share);
+               100.0 * m->pattern.share, told_by(p, m, words));
     }
     print_rest(p->growing);
     pocket = th_flow_pockets(p->flow, &pockets);
@@ -81,7 +99,11 @@ static void print_modes(const cli_findings *p, const cli_view *v)
         puts(
             "            period and speed of the density ripple in the pocket, wavelengths of the "
             "sound that it sends out;\n            single: how much of the ripple in the pocket is "
-            "one wave of that period (the rest beats with it)");
+            "one wave of that period (the rest beats with it); told apart\n            from the "
+            "undulation by: "
+            "growth by e or more from half the hold to its end; motion, a whole oscillation within "
+            "the hold; wave number, apart by\n            more than one wave in the pocket, and "
+            "imaged");
 }
 
 static void print_seed(const cli_findings *p, const cli_view *v, const cli_plan_seed *s,
@@ -223,7 +245,7 @@ static void print_tolerance(const cli_findings *p, const cli_view *v)
            "95 %");
     print_spread("growth rate", v->si ? "/s" : "", &t->growth, v->rate);
     if (t->frequency_known)
-        print_spread("frequency when growing", v->si ? "Hz" : "", &t->frequency, v->frequency);
+        print_spread("frequency, fastest", v->si ? "Hz" : "", &t->frequency, v->frequency);
     printf("            probability of any growth %.4g +- %.1g", t->growing.value,
            t->growing.error);
     if (t->visible_known)
