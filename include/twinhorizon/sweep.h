@@ -90,7 +90,8 @@ typedef struct {
 /**
  * Give the modes of the next point their branches: each continues the mode of the previous point
  * whose linear continuation lies nearest, nearest pairs first; a pair farther apart than `reach`
- * is none, and modes without one start new branches in the order of the list, from 1.
+ * (four times that for slow modes and for purely growing ones that turn into pairs) is
+ * none, and modes without one start new branches in the order of the list, from 1.
  *
  * @param[out] branch  [point->count]
  * @retval TH_ENOMEM   the line's memory is unchanged

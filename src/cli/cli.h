@@ -36,7 +36,7 @@ typedef struct {
     cli_use use;
 } cli_option;
 
-enum { CLI_SET_MAX = 64, CLI_OUTPUTS_MAX = 4, CLI_PATH_MAX = 4096 };
+enum { CLI_SET_MAX = 64, CLI_OUTPUTS_MAX = 8, CLI_PATH_MAX = 4096 };
 
 /* What stands on the command line of a command that takes one case. */
 typedef struct {
@@ -125,7 +125,7 @@ const char *cli_unit(const th_case *c, th_dimension dimension);
 const char *cli_ends_text(th_ends_kind kind);
 
 /* Flow, horizons and pockets in a few lines. */
-void cli_print_flow(const th_case *c, const th_flow *flow, bool details);
+void cli_print_flow(FILE *out, const th_case *c, const th_flow *flow, bool details);
 
 /* ---- flow.c --------------------------------------------------------------------------------- */
 

@@ -5,7 +5,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-#include "cli.h"
+#include "figure.h"
 
 /* A row of the table: a place and the piece from whose side it is seen. */
 typedef struct {
@@ -139,30 +139,41 @@ static th_status write_table(const th_case *c, const th_flow *flow, const char *
 
 int cli_flow(int argc, char **argv)
 {
-    const char *csv = NULL;
+    const char *csv = NULL, *picture = NULL, *script = NULL;
     const cli_option option[] = {
         {"--csv", "FILE", "table x,density,speed,sound,potential; - for standard output", &csv,
          CLI_TABLE},
+        CLI_FIGURE_OPTIONS(picture, script),
     };
+    cli_figure figure = {0};
     cli_arguments arguments;
     th_case *c = NULL;
     th_flow *flow = NULL;
     th_error err = {0};
     th_status st;
     int code = cli_read("flow", "Show the stationary flow: ends, horizons, pockets.", argc, argv,
-                        option, 1, &arguments);
+                        option, sizeof option / sizeof option[0], &arguments);
 
     if (code != CLI_DONE)
         return code < 0 ? CLI_DONE : code;
-    st = cli_read_case(&arguments, &c, &err);
+    st = cli_figure_check("flow", "--figure", picture, &err);
+    if (st == TH_OK)
+        st = cli_script_check("flow", script, picture != NULL, &err);
+    if (st == TH_OK)
+        st = cli_read_case(&arguments, &c, &err);
     if (st == TH_OK)
         st = th_flow_build(&c->setup, &flow, &err);
+    if (st == TH_OK && picture != NULL)
+        st = cli_draw_flow(c, flow, &figure, &err);
+    if (st == TH_OK && picture != NULL)
+        st = cli_figure_save(&figure, picture, script, &err);
     if (st == TH_OK && csv != NULL)
         st = write_table(c, flow, csv, &err);
     if (st != TH_OK)
         code = cli_failed(&err);
     else if (csv == NULL || strcmp(csv, "-") != 0)
-        cli_print_flow(c, flow, true);
+        cli_print_flow(stdout, c, flow, true);
+    cli_figure_clear(&figure);
     th_flow_destroy(flow);
     th_case_destroy(c);
     return code;

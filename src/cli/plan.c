@@ -37,7 +37,7 @@ int cli_plan(int argc, char **argv)
     if (st == TH_OK && csv != NULL)
         st = cli_plan_write(&plan, csv, &err);
     if (st == TH_OK && (csv == NULL || strcmp(csv, "-") != 0))
-        cli_plan_print(&plan);
+        cli_plan_print(stdout, &plan);
     if (st != TH_OK)
         code = cli_failed(&err);
     else if (plan.solution->verdict == TH_VERDICT_UNDECIDED)

@@ -82,9 +82,9 @@ const cli_plan_seed *cli_plan_main_seed(const cli_findings *plan);
 double cli_plan_level(const th_semiclassical_mode *level);
 
 /* The first lines, in sentences. */
-void cli_plan_print_answer(const cli_findings *plan);
+void cli_plan_print_answer(FILE *out, const cli_findings *plan);
 
-void cli_plan_print(const cli_findings *plan);
+void cli_plan_print(FILE *out, const cli_findings *plan);
 th_status cli_plan_write(const cli_findings *plan, const char *path, th_error *err) TH_MUST_USE;
 
 #endif

@@ -7,7 +7,7 @@
 #include <gsl/gsl_math.h>
 #include <string.h>
 
-#include "cli.h"
+#include "figure.h"
 
 /* "matrix, matching function, census and index agree": who stands behind the counts. */
 static void print_agreement(const th_solution *s)
@@ -225,13 +225,37 @@ static th_status write_matrix(const th_case *c, const th_flow *flow, const char 
     return st;
 }
 
+static th_status draw_spectrum(const th_case *c, const th_solution *s, const char *path,
+                               const char *script, th_error *err)
+{
+    cli_figure figure = {0};
+    th_status st = cli_draw_spectrum(c, s, &figure, err);
+
+    if (st == TH_OK)
+        st = cli_figure_save(&figure, path, script, err);
+    cli_figure_clear(&figure);
+    return st;
+}
+
+static th_status draw_modes(const th_case *c, const th_flow *flow, const th_solution *s,
+                            const char *path, th_error *err)
+{
+    cli_figure figure = {0};
+    th_status st = cli_draw_modes(c, flow, s, &figure, err);
+
+    if (st == TH_OK)
+        st = cli_figure_save(&figure, path, NULL, err);
+    cli_figure_clear(&figure);
+    return st;
+}
+
 static void print_all(const th_case *c, const th_flow *flow, const th_solution *s)
 {
     const cli_view v = cli_view_of(c);
 
     print_verdict(&v, s);
     putchar('\n');
-    cli_print_flow(c, flow, false);
+    cli_print_flow(stdout, c, flow, false);
     print_modes(&v, s);
     print_notes(&v, flow, s);
 }
@@ -239,6 +263,7 @@ static void print_all(const th_case *c, const th_flow *flow, const th_solution *
 int cli_solve(int argc, char **argv)
 {
     const char *csv = NULL, *modes = NULL, *matrix = NULL, *sensitivity = NULL;
+    const char *picture = NULL, *shapes = NULL, *script = NULL;
     const cli_option option[] = {
         {"--csv", "FILE", "table of the modes; - for standard output", &csv, CLI_TABLE},
         {"--modes", "FILE.h5", "shapes of the modes along the flow, HDF5", &modes, CLI_FILE},
@@ -246,6 +271,8 @@ int cli_solve(int argc, char **argv)
          "the matrix A in Matrix Market form; omega = i eigenvalue, "
          "reduced units",
          &matrix, CLI_FILE},
+        CLI_FIGURE_OPTIONS(picture, script),
+        {"--figure-modes", "FILE", "figure of the shapes of the first modes", &shapes, CLI_FILE},
         {"--sensitivity", NULL, "also print d omega/d key of every growing mode", &sensitivity,
          CLI_PLAIN},
     };
@@ -266,7 +293,13 @@ int cli_solve(int argc, char **argv)
     only_table = csv != NULL && strcmp(csv, "-") == 0;
     if (only_table && sensitivity != NULL)
         return cli_usage("solve: --csv - leaves no room on standard output for --sensitivity");
-    st = cli_read_case(&arguments, &c, &err);
+    st = cli_figure_check("solve", "--figure", picture, &err);
+    if (st == TH_OK)
+        st = cli_figure_check("solve", "--figure-modes", shapes, &err);
+    if (st == TH_OK)
+        st = cli_script_check("solve", script, picture != NULL, &err);
+    if (st == TH_OK)
+        st = cli_read_case(&arguments, &c, &err);
     if (st == TH_OK)
         st = th_flow_build(&c->setup, &flow, &err);
     if (st == TH_OK && matrix != NULL)
@@ -279,6 +312,10 @@ int cli_solve(int argc, char **argv)
         st = write_table(c, s, &errors, csv, &err);
     if (st == TH_OK && modes != NULL)
         st = cli_modes_write(c, flow, s, modes, &err);
+    if (st == TH_OK && picture != NULL)
+        st = draw_spectrum(c, s, picture, script, &err);
+    if (st == TH_OK && shapes != NULL)
+        st = draw_modes(c, flow, s, shapes, &err);
     if (st == TH_OK && !only_table)
         print_all(c, flow, s);
     if (st == TH_OK && !only_table) {

@@ -11,7 +11,7 @@
 #include <twinhorizon/sweep.h>
 #include <unistd.h>
 
-#include "cli.h"
+#include "figure.h"
 #include "progress.h"
 #include "ranks.h"
 #include "tables.h"
@@ -80,9 +80,28 @@ static long share(const th_case *c, const th_sweep_options *o)
     return sum;
 }
 
-static th_status run(const th_case *c, th_sweep_options o, bool resume, const char *folder,
-                     const char *path, int *code, th_error *err)
+/* What a run is told beside the sweep itself. */
+typedef struct {
+    const char *folder, *journal; /* paths */
+    const char *picture, *script; /* NULL: none */
+    bool resume;
+} request;
+
+static th_status draw(const th_case *c, const request *ask, int threads, th_error *err)
 {
+    cli_figure figure = {0};
+    th_status st = cli_draw_sweep(c, ask->folder, threads, &figure, err);
+
+    if (st == TH_OK)
+        st = cli_figure_save(&figure, ask->picture, ask->script, err);
+    cli_figure_clear(&figure);
+    return st;
+}
+
+static th_status run(const th_case *c, th_sweep_options o, const request *ask, int *code,
+                     th_error *err)
+{
+    const char *folder = ask->folder;
     th_journal *journal = NULL;
     cli_source source = {get, NULL};
     cli_progress progress;
@@ -95,7 +114,7 @@ static th_status run(const th_case *c, th_sweep_options o, bool resume, const ch
     if (st == TH_OK)
         st = cli_spare_case(c, folder, err);
     if (st == TH_OK)
-        st = th_journal_open(path, c, points, resume, &journal, err);
+        st = th_journal_open(ask->journal, c, points, ask->resume, &journal, err);
     if (st == TH_OK) {
         st = cli_keep_table(c, folder, err);
         if (st != TH_OK)
@@ -121,6 +140,8 @@ static th_status run(const th_case *c, th_sweep_options o, bool resume, const ch
         st = cli_write_tables(c, points, &source, folder, &counts, err);
         if (st == TH_OK)
             *code = cli_report_tables(&counts, folder);
+        if (st == TH_OK && ask->picture != NULL)
+            st = draw(c, ask, o.threads, err);
     }
     closed = th_journal_close(journal, st == TH_OK ? err : NULL);
     return st == TH_OK ? closed : st;
@@ -129,11 +150,14 @@ static th_status run(const th_case *c, th_sweep_options o, bool resume, const ch
 int cli_sweep(int argc, char **argv)
 {
     const char *folder = NULL, *threads = NULL, *resume = NULL, *part = NULL;
+    const char *picture = NULL, *script = NULL;
+    request ask;
     const cli_option option[] = {
         {"--out", "DIR", "folder for the journal and the tables; made when missing", &folder,
          CLI_NEEDED},
         {"--threads", "N", "threads; default: one for each processor", &threads, CLI_PLAIN},
         {"--resume", NULL, "go on with an interrupted sweep", &resume, CLI_PLAIN},
+        CLI_FIGURE_OPTIONS(picture, script),
         {"--part", "K/N", "only the K-th of N shares of the points, for batch systems", &part,
          CLI_PLAIN},
     };
@@ -152,13 +176,19 @@ int cli_sweep(int argc, char **argv)
         return cli_failed(&err);
     if (part != NULL && !read_part(part, &o.part, &o.parts))
         return cli_usage("sweep: --part %s: want K/N with 1 <= K <= N", part);
+    if (part != NULL && picture != NULL)
+        return cli_usage("sweep: --figure is for all points, and --part is some of them");
+    if (cli_figure_check("sweep", "--figure", picture, &err) != TH_OK ||
+        cli_script_check("sweep", script, picture != NULL, &err) != TH_OK)
+        return cli_failed(&err);
     path = cli_join(folder, "journal");
+    ask = (request){folder, path, picture, script, resume != NULL};
     st = path != NULL ? cli_read_case(&arguments, &c, &err)
                       : th_fail(&err, TH_ENOMEM, "sweep: the name of the journal");
     if (st == TH_OK && cli_rank() > 0)
         st = cli_ranks_sweep(c, &o, NULL, &err);
     else if (st == TH_OK)
-        st = run(c, o, resume != NULL, folder, path, &code, &err);
+        st = run(c, o, &ask, &code, &err);
     if (st != TH_OK)
         code = cli_rank() > 0 ? CLI_INTERNAL : cli_failed(&err);
     th_case_destroy(c);

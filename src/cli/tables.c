@@ -18,6 +18,8 @@
 /* A mode may move this far between neighbouring points, relative to the top of the band, beside
  * its extrapolation; farther than that it is taken for a new branch. */
 static const double branch_reach = 0.1;
+/* Flows of a line that are looked at for the band: its ends and between. */
+enum { LOOKS = 4 };
 
 /* A point and the branches of its modes. */
 typedef struct {
@@ -195,15 +197,21 @@ static void put_axes(th_table *table, const th_case *c, int first, int last, lon
 /* At the start of a line: forget the branches and measure how far modes may move. */
 static void new_line(writer *w, long number)
 {
-    th_flow_setup setup = th_sweep_setup(w->c, number);
-    th_flow *flow = NULL;
+    const int last = w->c->axis[w->c->axes - 1].count - 1;
+    double widest = 0.0;
 
-    setup.workspace = w->workspace;
     th_branches_clear(&w->line);
-    w->reach = HUGE_VAL;
-    if (th_flow_build(&setup, &flow, NULL) == TH_OK)
-        w->reach = branch_reach * th_flow_band_limit(flow);
-    th_flow_destroy(flow);
+    for (int i = 0; i <= LOOKS;
+         i++) { /* the widest band of the line; a short pocket has hardly any */
+        th_flow_setup setup = th_sweep_setup(w->c, number + (long)last * i / LOOKS);
+        th_flow *flow = NULL;
+
+        setup.workspace = w->workspace;
+        if (th_flow_build(&setup, &flow, NULL) == TH_OK)
+            widest = fmax(widest, th_flow_band_limit(flow));
+        th_flow_destroy(flow);
+    }
+    w->reach = widest > 0.0 ? branch_reach * widest : HUGE_VAL;
 }
 
 static th_status number_branches(writer *w, numbered *at, th_error *err)

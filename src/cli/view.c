@@ -70,53 +70,56 @@ const char *cli_ends_text(th_ends_kind kind)
     return "";
 }
 
-static void print_state(const cli_view *v, const char *name, const th_flow_point *at)
+static void print_state(FILE *out, const cli_view *v, const char *name, const th_flow_point *at)
 {
-    printf(
+    fprintf(
+        out,
         "            %-11s density %.6g%s, speed %.6g%s, sound %.6g%s, Mach %.4g, healing length "
         "%.4g%s\n",
         name, at->n * v->density, v->densities, at->v * v->speed, v->speeds, at->c * v->speed,
         v->speeds, at->v / at->c, v->length / at->c, v->micrometres);
 }
 
-static void print_horizons(const cli_view *v, const th_flow *flow)
+static void print_horizons(FILE *out, const cli_view *v, const th_flow *flow)
 {
     const th_horizon *h;
     int count;
 
     h = th_flow_horizons(flow, &count);
     if (count == 0)
-        puts("Horizons    none");
+        fputs("Horizons    none\n", out);
     for (int i = 0; i < count; i++) {
-        printf("%s%s horizon at x = %.6g%s", i == 0 ? "Horizons    " : "            ",
-               h[i].kind == TH_HORIZON_BLACK ? "black-hole" : "white-hole", h[i].x * v->length,
-               v->micrometres);
+        fprintf(out, "%s%s horizon at x = %.6g%s", i == 0 ? "Horizons    " : "            ",
+                h[i].kind == TH_HORIZON_BLACK ? "black-hole" : "white-hole", h[i].x * v->length,
+                v->micrometres);
         if (h[i].sharp)
-            puts(", a jump: no surface gravity");
+            fputs(", a jump: no surface gravity\n", out);
         else
-            printf(", surface gravity %.6g%s, Hawking temperature %.6g%s\n", h[i].kappa * v->rate,
-                   v->per_second, h[i].temperature * v->temperature, v->kelvin);
+            fprintf(out, ", surface gravity %.6g%s, Hawking temperature %.6g%s\n",
+                    h[i].kappa * v->rate, v->per_second, h[i].temperature * v->temperature,
+                    v->kelvin);
     }
 }
 
-static void print_pockets(const cli_view *v, const th_flow *flow)
+static void print_pockets(FILE *out, const cli_view *v, const th_flow *flow)
 {
     const th_pocket *p;
     int count;
 
     p = th_flow_pockets(flow, &count);
     if (count == 0)
-        puts("Pocket      none: no supersonic stretch between two horizons");
+        fputs("Pocket      none: no supersonic stretch between two horizons\n", out);
     for (int i = 0; i < count; i++)
-        printf("%s%.6g%s long, Mach up to %.4g, negative-energy band up to %.6g%s, static "
-               "undulation of wavelength %.4g%s\n",
-               i == 0 ? "Pocket      " : "            ", (p[i].right - p[i].left) * v->length,
-               v->micrometres, p[i].mach, p[i].omega_max * v->frequency, v->hertz,
-               2.0 * M_PI / p[i].undulation * v->length, v->micrometres);
+        fprintf(out,
+                "%s%.6g%s long, Mach up to %.4g, negative-energy band up to %.6g%s, static "
+                "undulation of wavelength %.4g%s\n",
+                i == 0 ? "Pocket      " : "            ", (p[i].right - p[i].left) * v->length,
+                v->micrometres, p[i].mach, p[i].omega_max * v->frequency, v->hertz,
+                2.0 * M_PI / p[i].undulation * v->length, v->micrometres);
 }
 
 /* How the flow was found, a part a line. */
-static void print_note(const char *note)
+static void print_note(FILE *out, const char *note)
 {
     const char *end;
 
@@ -124,29 +127,29 @@ static void print_note(const char *note)
         end = strstr(note, "; ");
         if (end == NULL)
             end = note + strlen(note);
-        printf("%s%.*s\n", label, (int)(end - note), note);
+        fprintf(out, "%s%.*s\n", label, (int)(end - note), note);
         note = *end == ';' ? end + 2 : end;
     }
 }
 
-static void print_edges(const cli_view *v, const double *edge, int edges)
+static void print_edges(FILE *out, const cli_view *v, const double *edge, int edges)
 {
     enum { MANY = 8 };
 
     if (edges > MANY)
-        printf("%d pieces between x = %.6g and %.6g%s\n", edges - 1, edge[0] * v->length,
-               edge[edges - 1] * v->length, v->micrometres);
+        fprintf(out, "%d pieces between x = %.6g and %.6g%s\n", edges - 1, edge[0] * v->length,
+                edge[edges - 1] * v->length, v->micrometres);
     else {
-        fputs("pieces between x =", stdout);
+        fputs("pieces between x =", out);
         for (int i = 0; i < edges; i++)
-            printf(" %.6g", edge[i] * v->length);
-        printf("%s\n", v->micrometres);
+            fprintf(out, " %.6g", edge[i] * v->length);
+        fprintf(out, "%s\n", v->micrometres);
     }
 }
 
 /* The transverse frequency that the equation of state implies: c^2 = omega_perp 2 a n/r with
  * r = sqrt(1 + 4 a n). */
-static void print_transverse(const cli_view *v, const th_flow *flow)
+static void print_transverse(FILE *out, const cli_view *v, const th_flow *flow)
 {
     const double a = th_flow_scattering(flow);
     th_flow_point at;
@@ -157,12 +160,13 @@ static void print_transverse(const cli_view *v, const th_flow *flow)
         return;
     th_flow_eval(flow, 0, th_flow_edges(flow, &edges)[0], &at);
     an = a * at.n;
-    printf("            transverse equation of state: a n = %.4g upstream, transverse frequency "
-           "%.6g%s\n",
-           an, at.c * at.c * sqrt(1.0 + 4.0 * an) / (2.0 * an) * v->frequency, v->hertz);
+    fprintf(out,
+            "            transverse equation of state: a n = %.4g upstream, transverse frequency "
+            "%.6g%s\n",
+            an, at.c * at.c * sqrt(1.0 + 4.0 * an) / (2.0 * an) * v->frequency, v->hertz);
 }
 
-void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
+void cli_print_flow(FILE *out, const th_case *c, const th_flow *flow, bool details)
 {
     const cli_view v = cli_view_of(c);
     const th_ends ends = th_flow_ends(flow);
@@ -171,15 +175,15 @@ void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
     int edges;
 
     edge = th_flow_edges(flow, &edges);
-    printf("Flow        %s, %s%s\n", c->setup.shape->name, cli_ends_text(ends.kind),
-           v.si ? "" : "; reduced units, hbar = m = 1");
+    fprintf(out, "Flow        %s, %s%s\n", c->setup.shape->name, cli_ends_text(ends.kind),
+            v.si ? "" : "; reduced units, hbar = m = 1");
     if (ends.kind == TH_ENDS_RING)
-        printf("            circumference %.6g%s, winding %d\n", ends.circumference * v.length,
-               v.micrometres, ends.winding);
+        fprintf(out, "            circumference %.6g%s, winding %d\n",
+                ends.circumference * v.length, v.micrometres, ends.winding);
     th_flow_eval(flow, 0, edge[0], &at);
     if (ends.kind == TH_ENDS_OPEN)
         th_flow_eval(flow, -1, edge[0], &at);
-    print_state(&v, "upstream", &at);
+    print_state(out, &v, "upstream", &at);
     if (details) {
         const th_pocket *p;
         int pockets;
@@ -187,18 +191,18 @@ void cli_print_flow(const th_case *c, const th_flow *flow, bool details)
         p = th_flow_pockets(flow, &pockets);
         for (int i = 0; i < pockets; i++) {
             th_flow_at(flow, 0.5 * (p[i].left + p[i].right), &at);
-            print_state(&v, "mid-pocket", &at);
+            print_state(out, &v, "mid-pocket", &at);
         }
         th_flow_eval(flow, edges - 2, edge[edges - 1], &at);
         if (ends.kind == TH_ENDS_OPEN)
             th_flow_eval(flow, edges - 1, edge[edges - 1], &at);
-        print_state(&v, "downstream", &at);
-        print_transverse(&v, flow);
-        printf("            flux n v = %.6g%s, ", th_flow_flux(flow) * v.speed * v.density,
-               v.si ? (c->density_given ? " /ms" : " mm/s (density relative to upstream)") : "");
-        print_edges(&v, edge, edges);
+        print_state(out, &v, "downstream", &at);
+        print_transverse(out, &v, flow);
+        fprintf(out, "            flux n v = %.6g%s, ", th_flow_flux(flow) * v.speed * v.density,
+                v.si ? (c->density_given ? " /ms" : " mm/s (density relative to upstream)") : "");
+        print_edges(out, &v, edge, edges);
     }
-    print_note(th_flow_note(flow));
-    print_horizons(&v, flow);
-    print_pockets(&v, flow);
+    print_note(out, th_flow_note(flow));
+    print_horizons(out, &v, flow);
+    print_pockets(out, &v, flow);
 }

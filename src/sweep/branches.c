@@ -16,6 +16,28 @@ typedef struct {
     int before, now;
 } pairing;
 
+/* Modes move fastest near zero: just after their birth, and where purely growing ones turn into
+ * pairs, through zero as a square root. A mode slower than this many times the reach, or one that
+ * turns, may go this many times as far; and a turn does not foretell the next step. */
+static const double slow = 3.0, fast = 4.0;
+
+static bool turns(const th_branches *line, size_t j, const th_point_mode *m)
+{
+    return (line->re[j] == 0.0) != (m->omega_re == 0.0);
+}
+
+/* How far a mode is from where a branch is expected; infinite when that is out of reach. */
+static double distance(const th_branches *line, size_t j, const th_point_mode *m, double reach)
+{
+    const bool turned = turns(line, j, m);
+    const double re = line->re[j] + (turned ? 0.0 : line->dre[j]);
+    const double im = line->im[j] + (turned ? 0.0 : line->dim[j]);
+    const bool quick = turned || hypot(line->re[j], line->im[j]) < slow * reach;
+    const double apart = hypot(m->omega_re - re, m->omega_im - im);
+
+    return apart <= (quick ? fast : 1.0) * reach ? apart : HUGE_VAL;
+}
+
 static int by_distance(const void *a, const void *b)
 {
     const pairing *x = a, *y = b;
@@ -67,10 +89,9 @@ th_status th_branches_next(th_branches *line, const th_point *point, double reac
     }
     for (size_t j = 0; j < m; j++)
         for (size_t i = 0; i < n; i++) {
-            const double apart = hypot(point->mode[i].omega_re - line->re[j] - line->dre[j],
-                                       point->mode[i].omega_im - line->im[j] - line->dim[j]);
+            const double apart = distance(line, j, &point->mode[i], reach);
 
-            if (apart <= reach)
+            if (apart < HUGE_VAL)
                 pair[pairs++] = (pairing){apart, (int)j, (int)i};
         }
     if (pairs > 0) /* in place, where qsort may ask for memory */
@@ -87,8 +108,10 @@ th_status th_branches_next(th_branches *line, const th_point *point, double reac
         next.re[i] = point->mode[i].omega_re;
         next.im[i] = point->mode[i].omega_im;
         next.branch[i] = j >= 0 ? line->branch[j] : ++next.last;
-        next.dre[i] = j >= 0 ? next.re[i] - line->re[j] : 0.0;
-        next.dim[i] = j >= 0 ? next.im[i] - line->im[j] : 0.0;
+        if (j >= 0 && !turns(line, (size_t)j, &point->mode[i])) { /* else 0, as it was made */
+            next.dre[i] = next.re[i] - line->re[j];
+            next.dim[i] = next.im[i] - line->im[j];
+        }
         branch[i] = next.branch[i];
     }
     release(line);
