@@ -28,12 +28,12 @@ SONAME  := libtwinhorizon.so.$(firstword $(subst ., ,$(VERSION)))
 # ---- what must be installed: the only list ---------------------------------------------------
 # Debian packages, and for other systems the same in words with the oldest version tried.
 RUN_PACKAGES    := make gcc libc6-dev pkg-config liblapacke-dev libopenblas-dev libgsl-dev libinih-dev \
-                   libhdf5-dev
+                   libhdf5-dev gnuplot-nox
 TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath python3-h5py python3-qcelemental \
                    octave git
 AUTHOR_PACKAGES := clang clang-format cppcheck shellcheck valgrind libopenmpi-dev openmpi-bin
 RUN_WORDS       := make 4.3, gcc 12 or clang 14, pkg-config, LAPACKE 3.11, OpenBLAS 0.3.21, GSL 2.7, inih 55, \
-                   HDF5 1.10.8 with its high-level library
+                   HDF5 1.10.8 with its high-level library, gnuplot 5.4 with cairo (for figures, at run time)
 TEST_WORDS      := cmocka 1.1.5, python 3.11 with numpy 1.24, scipy 1.10, mpmath 1.2, h5py 3.7 and qcelemental, \
                    Octave 7.3, git
 AUTHOR_WORDS    := clang 14, clang-format 14, cppcheck 2.10, shellcheck 0.9, valgrind 3.19, Open MPI 4.1

@@ -139,6 +139,9 @@ void cli_window(const th_flow *flow, double *from, double *to);
 th_status cli_modes_write(const th_case *c, const th_flow *flow, const th_solution *s,
                           const char *path, th_error *err) TH_MUST_USE;
 
+/* Version of the HDF5 library: major, minor, release. */
+void cli_modes_library(unsigned version[3]);
+
 /* ---- sensitivity.c -------------------------------------------------------------------------- */
 
 /* Print d omega / d key of every growing mode. */
@@ -170,6 +173,11 @@ void cli_data_errors_print(const th_case *c, const th_solution *s, const cli_dat
 th_status cli_print_remarks(const th_case *c, const th_flow *flow, const th_solution *s,
                             th_error *err) TH_MUST_USE;
 
+/* ---- main.c --------------------------------------------------------------------------------- */
+
+/* "GSL 2.7, OpenBLAS 0.3.21, HDF5 1.10.8" */
+void cli_print_libraries(FILE *out);
+
 /* ---- commands, one file each ---------------------------------------------------------------- */
 
 int cli_solve(int argc, char **argv);
@@ -178,5 +186,6 @@ int cli_sweep(int argc, char **argv);
 int cli_onset(int argc, char **argv);
 int cli_merge(int argc, char **argv);
 int cli_plan(int argc, char **argv);
+int cli_report(int argc, char **argv);
 
 #endif

@@ -6,6 +6,9 @@
 #ifndef CLI_FIGURE_H
 #define CLI_FIGURE_H
 
+#include <twinhorizon/onset.h>
+#include <twinhorizon/track.h>
+
 #include "cli.h"
 
 /* A figure in the making: write gnuplot commands and data blocks to `out`. */
@@ -75,5 +78,9 @@ th_status cli_draw_modes(const th_case *c, const th_flow *flow, const th_solutio
 /* The tables of a finished sweep: branches over one axis, a map over the last two of more. */
 th_status cli_draw_sweep(const th_case *c, const char *folder, int threads, cli_figure *figure,
                          th_error *err) TH_MUST_USE;
+
+/* Growth and frequency along a line of lengths, with `onsets` switch-on lengths marked. */
+th_status cli_draw_track(const th_case *c, const th_track *track, const th_onset *onset, int onsets,
+                         cli_figure *figure, th_error *err) TH_MUST_USE;
 
 #endif

@@ -7,7 +7,7 @@
 #include "figure.h"
 
 /* Points of each piece: curves are smooth to the eye at any size of paper. */
-enum { POINTS = 300 };
+enum { POINTS = 150 };
 
 static void data(const th_case *c, const th_flow *flow, double from, double to, FILE *out)
 {

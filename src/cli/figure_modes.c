@@ -38,8 +38,8 @@ static void spectrum_data(const cli_view *v, const th_solution *s, int *count, F
 th_status cli_draw_spectrum(const th_case *c, const th_solution *s, cli_figure *figure,
                             th_error *err)
 {
-    static const char *const look[LABELS] = {"lt 2 dt 1 pt 7 ps 1.5", "lt 4 dt 1 pt 12 ps 1.6",
-                                             "lt 1 dt 1 pt 6 ps 1.2", "lt 5 dt 1 pt 4 ps 1.4"};
+    static const char *const look[LABELS] = {"lt 2 dt 1 pt 7 ps 1.1", "lt 4 dt 1 pt 12 ps 1.2",
+                                             "lt 1 dt 1 pt 6 ps 0.9", "lt 5 dt 1 pt 4 ps 1.1"};
     const cli_view v = cli_view_of(c);
     double most = 0.0, least = 0.0, right = s->omega_top;
     int count[LABELS];

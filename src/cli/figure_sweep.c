@@ -25,25 +25,32 @@ typedef struct {
     char label[96];
 } shown_axis;
 
-static shown_axis axis_of(const th_case *c, int a)
+static shown_axis shown(const th_case *c, const th_shape_key *key)
 {
     const cli_view v = cli_view_of(c);
-    shown_axis s = {.axis = &c->axis[a], .key = th_axis_key(c->setup.shape, c->axis[a].key)};
-    const char *unit = cli_unit(c, s.key->dimension);
+    const char *unit = cli_unit(c, key->dimension);
+    shown_axis s = {.key = key, .factor = th_scale_factor(&c->scale, key->dimension)};
 
-    s.factor = th_scale_factor(&c->scale, s.key->dimension);
-    if (v.si && s.key->dimension == TH_DIM_LENGTH) {
+    if (v.si && key->dimension == TH_DIM_LENGTH) {
         s.factor = v.length;
         unit = "µm";
-    } else if (v.si && s.key->dimension == TH_DIM_SPEED) {
+    } else if (v.si && key->dimension == TH_DIM_SPEED) {
         s.factor = v.speed;
         unit = "mm/s";
     }
     if (unit == NULL || strcmp(unit, "1") == 0)
-        (void)snprintf(s.label, sizeof s.label, "%s%s", s.key->key,
-                       v.si || s.key->dimension == TH_DIM_NUMBER ? "" : " (reduced)");
+        (void)snprintf(s.label, sizeof s.label, "%s%s", key->key,
+                       v.si || key->dimension == TH_DIM_NUMBER ? "" : " (reduced)");
     else
-        (void)snprintf(s.label, sizeof s.label, "%s (%s)", s.key->key, unit);
+        (void)snprintf(s.label, sizeof s.label, "%s (%s)", key->key, unit);
+    return s;
+}
+
+static shown_axis axis_of(const th_case *c, int a)
+{
+    shown_axis s = shown(c, th_axis_key(c->setup.shape, c->axis[a].key));
+
+    s.axis = &c->axis[a];
     return s;
 }
 
@@ -160,6 +167,15 @@ typedef struct {
     bool lines; /* one axis: arrows at once */
 } curves;
 
+/* A vertical line. */
+static void put_onset(const th_onset *o, double length, FILE *out)
+{
+    fprintf(out,
+            "set arrow from first %.12g, graph 0 to first %.12g, graph 1 nohead lw 1 lc rgb "
+            "'#777777' dt %s\n",
+            o->gap * length, o->gap * length, o->kind == TH_ONSET_GROWING ? "'-'" : "'.'");
+}
+
 static th_status take_onset(void *ctx, const th_onset_point *point, th_error *err)
 {
     curves *w = ctx;
@@ -168,11 +184,7 @@ static th_status take_onset(void *ctx, const th_onset_point *point, th_error *er
         const th_onset *o = &point->list->onset[i];
 
         if (w->lines) {
-            fprintf(w->out,
-                    "set arrow from first %.12g, graph 0 to first %.12g, graph 1 nohead lw 1 lc "
-                    "rgb '#777777' dt %s\n",
-                    o->gap * w->length, o->gap * w->length,
-                    o->kind == TH_ONSET_GROWING ? "'-'" : "'.'");
+            put_onset(o, w->length, w->out);
             w->count++;
             continue;
         }
@@ -256,6 +268,13 @@ static void two_panels(const cli_view *v, const char *label, double from, double
     fputs("unset multiplot\n", out);
 }
 
+static void explain_lines(FILE *out)
+{
+    fputs("set label 1 'vertical lines: a mode switches on (dashed), the slowest turns into a pair "
+          "(dotted)' at graph 1, graph 1.04 right tc rgb '#777777'\n",
+          out);
+}
+
 static th_status draw_line(const th_case *c, const char *folder, int threads, cli_figure *figure,
                            th_error *err)
 {
@@ -290,17 +309,47 @@ static th_status draw_line(const th_case *c, const char *folder, int threads, cl
     }
     w.out = figure->out;
     st = find_onsets(c, 1, threads, &w, err);
-    if (st == TH_OK && w.count > 0)
-        fputs("set label 1 'vertical lines: a mode switches on (dashed), the slowest turns into a "
-              "pair (dotted)' at graph 1, graph 1.04 right tc rgb '#777777'\n",
-              figure->out);
     if (st == TH_OK) {
+        if (w.count > 0)
+            explain_lines(figure->out);
         two_panels(&v, x.label, from, to, branches, figure->out);
         st = cli_figure_close(figure, err);
     }
 done:
     free(s.spot);
     return st;
+}
+
+th_status cli_draw_track(const th_case *c, const th_track *track, const th_onset *onset, int onsets,
+                         cli_figure *figure, th_error *err)
+{
+    const cli_view v = cli_view_of(c);
+    const shown_axis x = shown(c, &c->setup.shape->key[th_shape_length(c->setup.shape)]);
+    const int branches = th_track_branches(track);
+    const th_track_point *point;
+    int points;
+    th_status st = cli_figure_open(figure, 900, 760, err);
+
+    if (st != TH_OK)
+        return st;
+    point = th_track_points(track, &points);
+    for (int b = 0; b < branches; b++) {
+        fprintf(figure->out, "$b%d << EOD\n", b + 1);
+        for (int i = 0; i < points; i++)
+            for (int k = 0; k < point[i].count; k++)
+                if (point[i].mode[k].branch == b)
+                    fprintf(figure->out, "%.12g %.9g %.9g\n", point[i].length * x.factor,
+                            point[i].mode[k].omega_re * v.frequency,
+                            point[i].mode[k].omega_im * v.rate);
+        fputs("EOD\n", figure->out);
+    }
+    for (int i = 0; i < onsets && i < ORDERS; i++)
+        put_onset(&onset[i], x.factor, figure->out);
+    if (onsets > 0)
+        explain_lines(figure->out);
+    two_panels(&v, x.label, point[0].length * x.factor, point[points - 1].length * x.factor,
+               branches, figure->out);
+    return cli_figure_close(figure, err);
 }
 
 /* ---- two axes ------------------------------------------------------------------------------- */

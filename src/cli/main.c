@@ -5,6 +5,7 @@
  * one line in cli.h and one line in the table below. */
 #include <errno.h>
 #include <gsl/gsl_errno.h>
+#include <gsl/gsl_version.h>
 #include <string.h>
 #include <twinhorizon/version.h>
 
@@ -22,6 +23,7 @@ static const struct {
     {"onset", "pocket lengths at which modes switch on, alone or over the axes of a case",
      cli_onset},
     {"plan", "an experiment: growth within the hold, seeds, ramps, tolerances, limits", cli_plan},
+    {"report", "all of it for one case, on one page with figures", cli_report},
     {"flow", "the stationary flow: horizons, pockets, the potential it needs", cli_flow},
 };
 enum { COMMANDS = sizeof command / sizeof command[0] };
@@ -38,6 +40,18 @@ static void help(FILE *stream)
                     "  twinhorizon --version         version\n\n"
                     "Exit: 0 done; 1 finished, but something is undecided or failed; 2 command "
                     "line, case file or output file; 3 internal error.\n");
+}
+
+void cli_print_libraries(FILE *out)
+{
+    extern char *openblas_get_config(void);
+    const char *blas = openblas_get_config(); /* "OpenBLAS 0.3.21 NO_AFFINITY ..." */
+    unsigned hdf5[3];
+
+    cli_modes_library(hdf5);
+    fprintf(out, "GSL %s, %.*s, HDF5 %u.%u.%u", gsl_version,
+            (int)(strcspn(blas, " ") + 1 + strcspn(blas + strcspn(blas, " ") + 1, " ")), blas,
+            hdf5[0], hdf5[1], hdf5[2]);
 }
 
 /* Numbers must not depend on how many threads a library happens to use. */
@@ -60,6 +74,8 @@ static int run(int argc, char **argv)
     }
     if (strcmp(argv[1], "--version") == 0) {
         printf("twinhorizon %s\n", th_version());
+        cli_print_libraries(stdout);
+        putchar('\n');
         return CLI_DONE;
     }
     for (int i = 0; i < COMMANDS; i++)

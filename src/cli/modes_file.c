@@ -384,3 +384,9 @@ done:
     free(w);
     return st;
 }
+
+void cli_modes_library(unsigned version[3])
+{
+    if (H5get_libversion(&version[0], &version[1], &version[2]) < 0)
+        version[0] = version[1] = version[2] = 0;
+}

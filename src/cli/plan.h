@@ -61,6 +61,7 @@ typedef struct {
     th_ramp ramp;
     cli_part best_part;
     double range_from, range_to;
+    th_track *line; /* along the range; NULL without an answer */
     th_track_best best;
     cli_part tolerance_part;
     th_tolerance tolerance;

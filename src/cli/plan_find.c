@@ -194,7 +194,6 @@ static void choose_range(cli_findings *p)
 static th_status find_best(cli_findings *p, int threads, th_error *err)
 {
     const int key = th_shape_length(p->c->setup.shape);
-    th_track *line = NULL;
     th_error why = {0};
     th_status st;
 
@@ -203,10 +202,9 @@ static th_status find_best(cli_findings *p, int threads, th_error *err)
         return TH_OK;
     }
     choose_range(p);
-    st = track(p, p->range_from, p->range_to, threads, &line, &why);
+    st = track(p, p->range_from, p->range_to, threads, &p->line, &why);
     if (st == TH_OK)
-        st = th_track_best_find(line, &p->best, &why);
-    th_track_destroy(line);
+        st = th_track_best_find(p->line, &p->best, &why);
     return settle(st, &why, &p->best_part, err);
 }
 
@@ -377,6 +375,7 @@ void cli_plan_clear(cli_findings *plan)
     free(plan->pocket);
     th_tolerance_clear(&plan->tolerance);
     th_track_best_clear(&plan->best);
+    th_track_destroy(plan->line);
     th_ramp_clear(&plan->ramp);
     th_seed_destroy(plan->vacuum.seed);
     th_seed_destroy(plan->thermal.seed);
