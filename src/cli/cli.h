@@ -24,6 +24,7 @@ typedef enum {
     CLI_PLAIN,
     CLI_NEEDED, /* the command is wrong without it */
     CLI_FILE,   /* a file that the command writes */
+    CLI_LATE,   /* the same, and its folder may be one that the command makes first */
     CLI_TABLE   /* the same with its metadata beside it; - is standard output */
 } cli_use;
 
@@ -73,8 +74,9 @@ int cli_usage(const char *format, ...) TH_PRINTF(1, 2);
 
 /* Before any work: every output has a folder that can be written, is not a folder itself, and no
  * two of them, nor their metadata, are one file. Links are followed: *place of the option becomes
- * what the link leads to. */
-th_status cli_check_outputs(const char *command, cli_arguments *arguments,
+ * what the link leads to. `folder_there`: the folder that the command makes for CLI_LATE is made.
+ */
+th_status cli_check_outputs(const char *command, cli_arguments *arguments, bool folder_there,
                             th_error *err) TH_MUST_USE;
 
 /* TH_EINVAL when one of the files that a command puts into a folder is this one. */

@@ -46,13 +46,11 @@ th_status cli_figure_check(const char *command, const char *option, const char *
 th_status cli_script_check(const char *command, const char *script, bool figure,
                            th_error *err) TH_MUST_USE;
 
-/* The two options of a command that draws. */
-#define CLI_FIGURE_OPTIONS(picture, script)                                                        \
-    {"--figure", "FILE", "figure, SVG, PDF or PNG by the ending of its name", &(picture),          \
-     CLI_FILE},                                                                                    \
+/* The two options of a command that draws, CLI_FILE or CLI_LATE. */
+#define CLI_FIGURE_OPTIONS(picture, script, when)                                                  \
+    {"--figure", "FILE", "figure, SVG, PDF or PNG by the ending of its name", &(picture), when},   \
     {                                                                                              \
-        "--script", "FILE.gp", "keep the figure's gnuplot script with its data", &(script),        \
-            CLI_FILE                                                                               \
+        "--script", "FILE.gp", "keep the figure's gnuplot script with its data", &(script), when   \
     }
 
 /* What a picture shows of a flow: the pockets and as much again on each side, within cli_window. */

@@ -143,7 +143,7 @@ int cli_flow(int argc, char **argv)
     const cli_option option[] = {
         {"--csv", "FILE", "table x,density,speed,sound,potential; - for standard output", &csv,
          CLI_TABLE},
-        CLI_FIGURE_OPTIONS(picture, script),
+        CLI_FIGURE_OPTIONS(picture, script, CLI_FILE),
     };
     cli_figure figure = {0};
     cli_arguments arguments;

@@ -131,7 +131,7 @@ int cli_read(const char *command, const char *summary, int argc, char **argv,
         if (option[i].use >= CLI_FILE && *option[i].place != NULL)
             out->output[out->outputs++] = &option[i];
     }
-    return cli_check_outputs(command, out, &err) == TH_OK ? CLI_DONE : cli_failed(&err);
+    return cli_check_outputs(command, out, false, &err) == TH_OK ? CLI_DONE : cli_failed(&err);
 }
 
 th_status cli_whole(const char *command, const char *name, const char *text, int low, int high,

@@ -82,7 +82,7 @@ static th_status follow(const cli_option *option, char *target, th_error *err)
     return TH_OK;
 }
 
-static th_status check_one(const cli_option *option, th_error *err)
+static th_status check_one(const cli_option *option, bool folder_there, th_error *err)
 {
     const char *path = *option->place, *slash = strrchr(path, '/');
     char folder[CLI_PATH_MAX] = ".";
@@ -103,6 +103,8 @@ static th_status check_one(const cli_option *option, th_error *err)
         memcpy(folder, path, (size_t)(slash - path) + 1);
         folder[slash - path + 1] = '\0';
     }
+    if (!folder_there && option->use == CLI_LATE && access(folder, F_OK) != 0 && errno == ENOENT)
+        return TH_OK;
     if (access(folder, W_OK | X_OK) != 0)
         return th_fail(err, TH_EIO, "%s %s: its folder cannot be written (%s)", option->name, path,
                        strerror(errno));
@@ -134,7 +136,8 @@ static bool clash(const cli_option *a, const cli_option *b)
     return false;
 }
 
-th_status cli_check_outputs(const char *command, cli_arguments *arguments, th_error *err)
+th_status cli_check_outputs(const char *command, cli_arguments *arguments, bool folder_there,
+                            th_error *err)
 {
     th_error why;
 
@@ -146,7 +149,7 @@ th_status cli_check_outputs(const char *command, cli_arguments *arguments, th_er
             continue;
         st = follow(option, arguments->target[i], &why);
         if (st == TH_OK)
-            st = check_one(option, &why);
+            st = check_one(option, folder_there, &why);
         if (st != TH_OK)
             return th_fail(err, st, "%s: %s", command, why.text);
         for (int k = 0; k < i; k++)

@@ -271,7 +271,7 @@ int cli_solve(int argc, char **argv)
          "the matrix A in Matrix Market form; omega = i eigenvalue, "
          "reduced units",
          &matrix, CLI_FILE},
-        CLI_FIGURE_OPTIONS(picture, script),
+        CLI_FIGURE_OPTIONS(picture, script, CLI_FILE),
         {"--figure-modes", "FILE", "figure of the shapes of the first modes", &shapes, CLI_FILE},
         {"--sensitivity", NULL, "also print d omega/d key of every growing mode", &sensitivity,
          CLI_PLAIN},

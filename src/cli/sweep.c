@@ -84,6 +84,7 @@ static long share(const th_case *c, const th_sweep_options *o)
 typedef struct {
     const char *folder, *journal; /* paths */
     const char *picture, *script; /* NULL: none */
+    cli_arguments *arguments;
     bool resume;
 } request;
 
@@ -111,6 +112,8 @@ static th_status run(const th_case *c, th_sweep_options o, const request *ask, i
 
     if (st == TH_OK)
         st = cli_make_folder(folder, err);
+    if (st == TH_OK)
+        st = cli_check_outputs("sweep", ask->arguments, true, err);
     if (st == TH_OK)
         st = cli_spare_case(c, folder, err);
     if (st == TH_OK)
@@ -157,7 +160,7 @@ int cli_sweep(int argc, char **argv)
          CLI_NEEDED},
         {"--threads", "N", "threads; default: one for each processor", &threads, CLI_PLAIN},
         {"--resume", NULL, "go on with an interrupted sweep", &resume, CLI_PLAIN},
-        CLI_FIGURE_OPTIONS(picture, script),
+        CLI_FIGURE_OPTIONS(picture, script, CLI_LATE),
         {"--part", "K/N", "only the K-th of N shares of the points, for batch systems", &part,
          CLI_PLAIN},
     };
@@ -182,7 +185,7 @@ int cli_sweep(int argc, char **argv)
         cli_script_check("sweep", script, picture != NULL, &err) != TH_OK)
         return cli_failed(&err);
     path = cli_join(folder, "journal");
-    ask = (request){folder, path, picture, script, resume != NULL};
+    ask = (request){folder, path, picture, script, &arguments, resume != NULL};
     st = path != NULL ? cli_read_case(&arguments, &c, &err)
                       : th_fail(&err, TH_ENOMEM, "sweep: the name of the journal");
     if (st == TH_OK && cli_rank() > 0)
