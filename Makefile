@@ -1,7 +1,7 @@
 # twinhorizon: linear stability of sonic horizon pairs in Bose-Einstein condensates
 # SPDX-License-Identifier: GPL-3.0-or-later
 #
-# GNU make. For users:   deps demo check all install uninstall clean
+# GNU make. For users:   deps demo check all install uninstall dist clean
 #           for authors: bench lint sanitize valgrind, and .ci/run for all of it
 # Files are found by their place, so a new one needs no line here:
 #   src/*.c src/*/*.c   the library        src/cli/*.c     the program
@@ -29,13 +29,13 @@ SONAME  := libtwinhorizon.so.$(firstword $(subst ., ,$(VERSION)))
 # Debian packages, and for other systems the same in words with the oldest version tried.
 RUN_PACKAGES    := make gcc libc6-dev pkg-config liblapacke-dev libopenblas-dev libgsl-dev libinih-dev \
                    libhdf5-dev gnuplot-nox
-TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath python3-h5py python3-qcelemental \
-                   octave git
+TEST_PACKAGES   := libcmocka-dev python3 python3-numpy python3-scipy python3-mpmath python3-h5py python3-matplotlib python3-qcelemental \
+                   octave git man-db
 AUTHOR_PACKAGES := clang clang-format cppcheck shellcheck valgrind libopenmpi-dev openmpi-bin
 RUN_WORDS       := make 4.3, gcc 12 or clang 14, pkg-config, LAPACKE 3.11, OpenBLAS 0.3.21, GSL 2.7, inih 55, \
                    HDF5 1.10.8 with its high-level library, gnuplot 5.4 with cairo (for figures, at run time)
-TEST_WORDS      := cmocka 1.1.5, python 3.11 with numpy 1.24, scipy 1.10, mpmath 1.2, h5py 3.7 and qcelemental, \
-                   Octave 7.3, git
+TEST_WORDS      := cmocka 1.1.5, python 3.11 with numpy 1.24, scipy 1.10, mpmath 1.2, h5py 3.7, matplotlib 3.6 and qcelemental, \
+                   Octave 7.3, git, man
 AUTHOR_WORDS    := clang 14, clang-format 14, cppcheck 2.10, shellcheck 0.9, valgrind 3.19, Open MPI 4.1
 
 # $(call install,packages,words,needed commands)
@@ -69,16 +69,17 @@ TESTS       := $(TEST_SOURCES:%.c=$(BUILD)/%)
 ARCHIVE     := $(BUILD)/libtwinhorizon.a
 SHARED      := $(BUILD)/libtwinhorizon.so
 PROGRAM     := $(BUILD)/twinhorizon
+MANUALS     := $(BUILD)/twinhorizon.1 $(BUILD)/twinhorizon-case.5
 
 # A make of its own, which sees what the line before it has installed.
 AGAIN = +@$(MAKE) --no-print-directory $(if $(findstring -j,$(MAKEFLAGS)),,-j$(JOBS))
 
 .PHONY: all deps demo demo-run check tests run-tests run-c-tests bench lint sanitize valgrind \
-        install uninstall clean
+        install uninstall dist clean
 .DELETE_ON_ERROR:
 .SECONDARY:
 
-all: $(ARCHIVE) $(SHARED) $(PROGRAM)
+all: $(ARCHIVE) $(SHARED) $(PROGRAM) $(MANUALS)
 
 # ---- building --------------------------------------------------------------------------------
 # The program sees public headers only; library and tests also see private ones.
@@ -104,6 +105,13 @@ $(SHARED): $(LIB_OBJECTS) src/twinhorizon.map
 
 $(PROGRAM): $(CLI_OBJECTS) $(ARCHIVE)
 	$(SAY)$(LINK) $^ $(LIBS) $(HDF5_LIBS) $(MORE_LIBS) -o $@
+
+# The page of the case file comes from the tables that the program reads with.
+$(BUILD)/twinhorizon.1: src/cli/twinhorizon.1 include/twinhorizon/version.h
+	@sed 's|@VERSION@|$(VERSION)|' $< > $@
+
+$(BUILD)/twinhorizon-case.5: $(PROGRAM)
+	@$(PROGRAM) --case-manual > $@
 
 # A test that includes refuse.h stands between the library and its allocator.
 $(BUILD)/tests/test_%: $(BUILD)/tests/test_%.o $(ARCHIVE)
@@ -150,12 +158,18 @@ lint: all
 	cppcheck --quiet --error-exitcode=1 --std=c11 --enable=warning,performance,portability \
 	    --inline-suppr --suppress=missingIncludeSystem -Iinclude -Isrc src
 	shellcheck .ci/run $(wildcard tests/run tests/deps tests/demo tests/*.sh)
+	shellcheck -s bash src/cli/completion.bash
 	bash tests/check_house.sh $(PROGRAM)
 
 # ---- installing ------------------------------------------------------------------------------
 install: all
 	install -d $(DESTDIR)$(PREFIX)/bin $(DESTDIR)$(PREFIX)/lib/pkgconfig \
-	    $(DESTDIR)$(PREFIX)/include/twinhorizon
+	    $(DESTDIR)$(PREFIX)/include/twinhorizon $(DESTDIR)$(PREFIX)/share/man/man1 \
+	    $(DESTDIR)$(PREFIX)/share/man/man5 $(DESTDIR)$(PREFIX)/share/bash-completion/completions
+	install -m 644 $(BUILD)/twinhorizon.1 $(DESTDIR)$(PREFIX)/share/man/man1/
+	install -m 644 $(BUILD)/twinhorizon-case.5 $(DESTDIR)$(PREFIX)/share/man/man5/
+	install -m 644 src/cli/completion.bash \
+	    $(DESTDIR)$(PREFIX)/share/bash-completion/completions/twinhorizon
 	install -m 755 $(PROGRAM) $(DESTDIR)$(PREFIX)/bin/
 	install -m 644 $(ARCHIVE) $(DESTDIR)$(PREFIX)/lib/
 	install -m 755 $(SHARED) $(DESTDIR)$(PREFIX)/lib/libtwinhorizon.so.$(VERSION)
@@ -169,8 +183,17 @@ uninstall:
 	rm -f $(DESTDIR)$(PREFIX)/bin/twinhorizon $(DESTDIR)$(PREFIX)/lib/libtwinhorizon.a \
 	    $(DESTDIR)$(PREFIX)/lib/libtwinhorizon.so $(DESTDIR)$(PREFIX)/lib/$(SONAME) \
 	    $(DESTDIR)$(PREFIX)/lib/libtwinhorizon.so.$(VERSION) \
-	    $(DESTDIR)$(PREFIX)/lib/pkgconfig/twinhorizon.pc
+	    $(DESTDIR)$(PREFIX)/lib/pkgconfig/twinhorizon.pc \
+	    $(DESTDIR)$(PREFIX)/share/man/man1/twinhorizon.1 \
+	    $(DESTDIR)$(PREFIX)/share/man/man5/twinhorizon-case.5 \
+	    $(DESTDIR)$(PREFIX)/share/bash-completion/completions/twinhorizon
 	rm -rf $(DESTDIR)$(PREFIX)/include/twinhorizon
+
+# What is tracked at this commit, as one file that builds and passes its tests by itself.
+dist:
+	@mkdir -p $(BUILD)
+	git archive --format=tar.gz --prefix=twinhorizon-$(VERSION)/ \
+	    -o $(BUILD)/twinhorizon-$(VERSION).tar.gz HEAD
 
 clean:
 	rm -rf $(BUILD)

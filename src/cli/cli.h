@@ -180,6 +180,11 @@ th_status cli_print_remarks(const th_case *c, const th_flow *flow, const th_solu
 /* "GSL 2.7, OpenBLAS 0.3.21, HDF5 1.10.8" */
 void cli_print_libraries(FILE *out);
 
+/* ---- manual.c ------------------------------------------------------------------------------- */
+
+/* The source of twinhorizon-case(5). */
+void cli_print_case_manual(void);
+
 /* ---- commands, one file each ---------------------------------------------------------------- */
 
 int cli_solve(int argc, char **argv);

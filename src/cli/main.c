@@ -37,7 +37,8 @@ static void help(FILE *stream)
     for (int i = 0; i < COMMANDS; i++)
         fprintf(stream, "  twinhorizon %-6s ...        %s\n", command[i].name, command[i].doc);
     fprintf(stream, "\n  twinhorizon COMMAND --help    options of a command\n"
-                    "  twinhorizon --version         version\n\n"
+                    "  twinhorizon --version         version, libraries\n"
+                    "  twinhorizon --case-manual     manual page of the case file, for man -l -\n\n"
                     "Exit: 0 done; 1 finished, but something is undecided or failed; 2 command "
                     "line, case file or output file; 3 internal error.\n");
 }
@@ -76,6 +77,10 @@ static int run(int argc, char **argv)
         printf("twinhorizon %s\n", th_version());
         cli_print_libraries(stdout);
         putchar('\n');
+        return CLI_DONE;
+    }
+    if (strcmp(argv[1], "--case-manual") == 0) {
+        cli_print_case_manual();
         return CLI_DONE;
     }
     for (int i = 0; i < COMMANDS; i++)
