@@ -49,6 +49,15 @@ static void print_visible(FILE *out, const cli_findings *p, const cli_view *v)
         fprintf(out, "Visible     not known: %s\n", seed->part.why);
         return;
     }
+    if (seed->visible_time == 0.0) {
+        fprintf(
+            out,
+            "Visible     no: %s alone make a contrast of %.3g at the start, above the %.3g that "
+            "counts as visible; growth does not stand out from them\n",
+            seed->temperature > 0.0 ? "thermal and vacuum fluctuations" : "vacuum fluctuations",
+            seed->contrast[0], ask->visibility);
+        return;
+    }
     fprintf(out, "Visible     a contrast of %.3g is reached after %.4g%s, from %s", ask->visibility,
             seed->visible_time * v->time, v->milliseconds,
             seed->temperature > 0.0 ? "thermal and vacuum fluctuations" : "the vacuum alone");

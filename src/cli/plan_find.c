@@ -233,6 +233,7 @@ static th_status find_tolerance(cli_findings *p, int threads, th_error *err)
                                     .seed = (unsigned long)ask->seed,
                                     .accuracy = p->c->accuracy,
                                     .threads = threads};
+    const cli_plan_seed *seed = cli_plan_main_seed(p);
     double *amplitude = NULL;
     bool any = false;
     th_error why = {0};
@@ -248,7 +249,8 @@ static th_status find_tolerance(cli_findings *p, int threads, th_error *err)
     if (amplitude == NULL)
         return th_fail(err, TH_ENOMEM, "plan: %d amplitudes", p->solution->count);
     amplitudes(p, amplitude);
-    if (cli_plan_main_seed(p)->part.known && ask->hold_time > 0.0) {
+    /* where the seed is already visible, visible growth is no question */
+    if (seed->part.known && seed->visible_time > 0.0 && ask->hold_time > 0.0) {
         options.hold = ask->hold_time;
         options.threshold = ask->visibility;
         options.amplitude = amplitude;
