@@ -40,17 +40,6 @@ th_status cli_figure_open(cli_figure *figure, int width, int height, th_error *e
     return TH_OK;
 }
 
-void cli_figure_quote(cli_figure *figure, const char *text)
-{
-    fputc('"', figure->out);
-    for (; *text != '\0'; text++) {
-        if (*text == '"' || *text == '\\')
-            fputc('\\', figure->out);
-        fputc((unsigned char)*text < 0x20 ? ' ' : *text, figure->out);
-    }
-    fputc('"', figure->out);
-}
-
 th_status cli_figure_close(cli_figure *figure, th_error *err)
 {
     FILE *out = figure->out;

@@ -22,9 +22,6 @@ typedef struct {
 /* Begin one: size, the common style. */
 th_status cli_figure_open(cli_figure *figure, int width, int height, th_error *err) TH_MUST_USE;
 
-/* A string in a script, quoted. */
-void cli_figure_quote(cli_figure *figure, const char *text);
-
 /* End writing. */
 th_status cli_figure_close(cli_figure *figure, th_error *err) TH_MUST_USE;
 

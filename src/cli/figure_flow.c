@@ -65,12 +65,13 @@ void cli_draw_pockets(const th_flow *flow, double length, FILE *out)
                 "set object %d rectangle from first %.9g, graph 0 to first %.9g, graph 1 behind fc "
                 "rgb '#f3ead2' fs solid noborder\n",
                 i + 1, pocket[i].left * length, pocket[i].right * length);
+    /* colours differ by one: gnuplot 5.4 gives neighbours of one colour in an SVG one dash */
     for (int i = 0; i < horizons; i++)
         fprintf(out,
                 "set arrow %d from first %.9g, graph 0 to first %.9g, graph 1 nohead lw 1.3 lc rgb "
-                "'#333333' dt %s\n",
+                "%s\n",
                 i + 1, horizon[i].x * length, horizon[i].x * length,
-                horizon[i].kind == TH_HORIZON_BLACK ? "1" : "'.'");
+                horizon[i].kind == TH_HORIZON_BLACK ? "'#333333' dt 1" : "'#343434' dt '.'");
 }
 
 static void labels(const th_case *c, const th_flow *flow, FILE *out)

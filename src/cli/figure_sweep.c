@@ -95,6 +95,7 @@ static bool take_point(void *ctx, long row, int count, const char *const *cell)
 typedef struct {
     int branch;
     long row;
+    bool grows;
     double x, frequency, growth;
 } spot;
 
@@ -115,8 +116,6 @@ static bool take_mode(void *ctx, long row, int count, const char *const *cell)
         s->r->bad = true;
         return false;
     }
-    if (strcmp(cell[axes + 2], "unstable") != 0)
-        return true;
     if (s->count == s->room) {
         const long room = s->room > 0 ? 2 * s->room : 256;
         spot *more = realloc(s->spot, (size_t)room * sizeof *more);
@@ -128,8 +127,12 @@ static bool take_mode(void *ctx, long row, int count, const char *const *cell)
         s->spot = more;
         s->room = room;
     }
-    s->spot[s->count++] = (spot){(int)number_of(cell[axes + 1]), row, number_of(cell[axes - 1]),
-                                 number_of(cell[axes + 3]), number_of(cell[axes + 4])};
+    s->spot[s->count++] = (spot){(int)number_of(cell[axes + 1]),
+                                 row,
+                                 strcmp(cell[axes + 2], "unstable") == 0,
+                                 number_of(cell[axes - 1]),
+                                 number_of(cell[axes + 3]),
+                                 number_of(cell[axes + 4])};
     return true;
 }
 
@@ -170,10 +173,11 @@ typedef struct {
 /* A vertical line. */
 static void put_onset(const th_onset *o, double length, FILE *out)
 {
-    fprintf(out,
-            "set arrow from first %.12g, graph 0 to first %.12g, graph 1 nohead lw 1 lc rgb "
-            "'#777777' dt %s\n",
-            o->gap * length, o->gap * length, o->kind == TH_ONSET_GROWING ? "'-'" : "'.'");
+    fprintf(
+        out, "set arrow from first %.12g, graph 0 to first %.12g, graph 1 nohead lw 1 lc rgb %s\n",
+        o->gap * length, o->gap * length,
+        /* colours differ by one: gnuplot 5.4 gives neighbours of one colour in an SVG one dash */
+        o->kind == TH_ONSET_GROWING ? "'#777777' dt '-'" : "'#787878' dt '.'");
 }
 
 static th_status take_onset(void *ctx, const th_onset_point *point, th_error *err)
@@ -286,6 +290,7 @@ static th_status draw_line(const th_case *c, const char *folder, int threads, cl
     reader r = {.c = c, .axes = 1};
     spots s = {.r = &r};
     curves w = {.length = x.factor, .lines = true};
+    bool open = false; /* a block is being written */
     int branches = 0;
     th_status st = read_table(folder, "modes.csv", take_mode, &s, &r, err);
 
@@ -296,12 +301,22 @@ static th_status draw_line(const th_case *c, const char *folder, int threads, cl
     if (s.count > 0)
         qsort(s.spot, (size_t)s.count, sizeof *s.spot, by_branch);
     for (long i = 0; i < s.count; i++) {
-        if (i == 0 || s.spot[i].branch != s.spot[i - 1].branch)
-            fprintf(figure->out, "%s$b%d << EOD\n", i > 0 ? "EOD\n" : "", ++branches);
+        const bool next = i == 0 || s.spot[i].branch != s.spot[i - 1].branch;
+
+        if (next && open)
+            fputs("EOD\n", figure->out);
+        open = open && !next;
+        if (!s.spot[i].grows) { /* a branch that does not grow here: its line breaks */
+            fputs(open ? "\n" : "", figure->out);
+            continue;
+        }
+        if (!open)
+            fprintf(figure->out, "$b%d << EOD\n", ++branches);
+        open = true;
         fprintf(figure->out, "%.12g %.9g %.9g\n", s.spot[i].x * table,
                 s.spot[i].frequency * v.frequency / rate, s.spot[i].growth);
     }
-    if (s.count > 0)
+    if (open)
         fputs("EOD\n", figure->out);
     for (int i = 0; i < x.axis->count; i++) {
         from = fmin(from, x.axis->value[i] * x.factor);
