@@ -2,7 +2,7 @@
 # SPDX-License-Identifier: GPL-3.0-or-later
 #
 # GNU make. For users:   deps demo check all install uninstall dist clean
-#           for authors: bench lint sanitize valgrind, and .ci/run for all of it
+#           for authors: bench lint sanitize valgrind fuzz, and .ci/run for all of it
 # Files are found by their place, so a new one needs no line here:
 #   src/*.c src/*/*.c   the library        src/cli/*.c     the program
 #   tests/test_*.c      a cmocka program   tests/*.py *.sh a TAP script, given the program as $1
@@ -74,7 +74,7 @@ MANUALS     := $(BUILD)/twinhorizon.1 $(BUILD)/twinhorizon-case.5
 # A make of its own, which sees what the line before it has installed.
 AGAIN = +@$(MAKE) --no-print-directory $(if $(findstring -j,$(MAKEFLAGS)),,-j$(JOBS))
 
-.PHONY: all deps demo demo-run check tests run-tests run-c-tests bench lint sanitize valgrind \
+.PHONY: all deps demo demo-run check tests run-tests run-c-tests bench lint sanitize valgrind fuzz \
         install uninstall dist clean
 .DELETE_ON_ERROR:
 .SECONDARY:
@@ -152,12 +152,23 @@ valgrind: tests
 	@JOBS=$(JOBS) WRAPPER="valgrind -q --error-exitcode=99 --leak-check=full" \
 	    bash tests/run - $(TESTS)
 
+# SECONDS for each reader of foreign bytes; FUZZ=case fuzzes one of them. Needs clang.
+SECONDS := 60
+FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzz/%,$(wildcard tests/fuzz/fuzz_*.c))
+fuzz: all $(FUZZERS)
+	bash tests/fuzz/run $(BUILD)/fuzz $(SECONDS) $(FUZZ)
+
+$(BUILD)/fuzz/%: tests/fuzz/%.c $(LIB_SOURCES) $(HEADERS)
+	@mkdir -p $(@D)
+	$(SAY)clang $(LANGUAGE) $(WARNINGS) -O1 -g -D_GNU_SOURCE -fsanitize=fuzzer,address,undefined \
+	    -fno-sanitize-recover=all -Iinclude -Isrc -Itests/fuzz $(PKG_CFLAGS) $< $(LIB_SOURCES) $(LIBS) -o $@
+
 lint: all
 	@$(call install,$(AUTHOR_PACKAGES),$(AUTHOR_WORDS),clang-format cppcheck shellcheck)
-	clang-format --dry-run -Werror $(wildcard src/*.[ch] src/*/*.[ch] tests/*.[ch]) $(HEADERS)
+	clang-format --dry-run -Werror $(wildcard src/*.[ch] src/*/*.[ch] tests/*.[ch] tests/fuzz/*.[ch]) $(HEADERS)
 	cppcheck --quiet --error-exitcode=1 --std=c11 --enable=warning,performance,portability \
 	    --inline-suppr --suppress=missingIncludeSystem -Iinclude -Isrc src
-	shellcheck .ci/run $(wildcard tests/run tests/deps tests/demo tests/*.sh)
+	shellcheck .ci/run $(wildcard tests/run tests/deps tests/demo tests/fuzz/run tests/*.sh)
 	shellcheck -s bash src/cli/completion.bash
 	bash tests/check_house.sh $(PROGRAM)
 
