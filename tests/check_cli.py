@@ -95,6 +95,17 @@ def main():
           done.stderr)
     done = run("solve", "my.ini", "--csv", "/dev/null", "--matrix", "/dev/null")
     check(done.returncode == 0, "a device takes two outputs", done.stderr)
+    # one part of a sweep twice, under two names
+    run("sweep", "my.ini", "--set", "sweep.gap=1 to 2 in 40", "--out", "one", "--part", "1/2")
+    os.symlink("one", "same")
+    refused("are one folder", "merge", "one", "same", "--out", "whole")
+    run("sweep", "my.ini", "--set", "sweep.gap=1 to 2 in 40", "--out", "two", "--part", "2/2")
+    done = run("merge", "--out", "one", "one", "two")
+    check(done.returncode == 0 and "40 points" in done.stdout, "parts into one of them", done.stderr)
+    with open("edge.ini", "w", encoding="ascii") as file:
+        file.write("[units]\nsystem = reduced\n[flow]\nshape = potential\nmach = 0.6\nprofile = step\n")
+    refused("no pocket of a length", "onset", "edge.ini")
+    refused("padding", "solve", "my.ini", "--set", "ends.kind=walls", "--set", "ends.padding=1e9")
     print(f"1..{count}")
     return bad > 0
 

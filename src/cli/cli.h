@@ -87,6 +87,9 @@ th_status cli_check_folder(const char *folder, const char *const *name, int name
 th_status cli_check_input(const cli_arguments *arguments, const char *path,
                           th_error *err) TH_MUST_USE;
 
+/* Whether two paths lead to one folder. */
+bool cli_same_folder(const char *a, const char *b);
+
 /* Start a table in a file, or on standard output when path is "-". */
 th_status cli_table(const char *path, const th_column *column, int columns, const char *title,
                     const th_case *c, th_table **out, th_error *err) TH_MUST_USE;

@@ -27,7 +27,9 @@ static th_status get(void *ctx, long number, th_point *point, th_error *err)
     return th_fail(err, TH_ENONE, "merge: point %ld is missing", number + 1);
 }
 
-static th_status open_one(parts *p, const char *folder, th_error *err)
+/* One part twice is a slip of the hand: what was meant is missing or counted for nothing. */
+static th_status open_one(parts *p, const char *folder, char *const *before, int count,
+                          th_error *err)
 {
     char *path = cli_join(folder, "journal");
     const char *text = NULL;
@@ -36,6 +38,11 @@ static th_status open_one(parts *p, const char *folder, th_error *err)
 
     if (path == NULL)
         return th_fail(err, TH_ENOMEM, "merge: the name of a journal");
+    for (int i = 0; i < count; i++)
+        if ((i == 0 || strcmp(before[i - 1], "--out") != 0) && cli_same_folder(before[i], folder)) {
+            free(path);
+            return th_fail(err, TH_EINVAL, "merge: %s and %s are one folder", before[i], folder);
+        }
     st = th_journal_read_only(path, &p->journal[p->count], &points, &text, err);
     if (st == TH_OK && p->count == 0)
         p->first = path;
@@ -132,7 +139,7 @@ int cli_merge(int argc, char **argv)
             code = cli_usage("merge: there is no option %s; twinhorizon merge --help lists them",
                              argv[i]);
         } else {
-            st = open_one(&p, argv[i], &err);
+            st = open_one(&p, argv[i], argv, i, &err);
         }
     }
     if (st != TH_OK)

@@ -277,6 +277,11 @@ static th_status run(state *w, const th_onset_options *options, const char *csv,
     if (key < 0)
         return th_fail(err, TH_EINVAL, "onset: shape %s has no key that is a pocket's length",
                        w->c->setup.shape->name);
+    if (!(options->upto > 0.0))
+        return th_fail(err, TH_EINVAL,
+                       "onset: this flow has no pocket of a length: %s is not given, neither is "
+                       "--upto",
+                       w->c->setup.shape->key[key].key);
     w->key = &w->c->setup.shape->key[key];
     w->upto = options->upto;
     w->view = cli_view_of(w->c);

@@ -43,6 +43,14 @@ static bool locate(const char *path, const char *ending, whereabouts *out)
     return true;
 }
 
+bool cli_same_folder(const char *a, const char *b)
+{
+    struct stat x, y;
+
+    return stat(a, &x) == 0 && stat(b, &y) == 0 && S_ISDIR(x.st_mode) && x.st_dev == y.st_dev &&
+           x.st_ino == y.st_ino;
+}
+
 static bool same_file(const char *a, const char *a_ending, const char *b, const char *b_ending)
 {
     struct stat x, y;

@@ -204,11 +204,12 @@ static th_status cut(cutter *c, int piece, double left, double right, th_error *
         }
         c->total += step.repeat;
         if (st == TH_OK && c->total > STEPS_MAX)
-            return th_fail(err, TH_EUNDECIDED,
-                           "matching: the flow is too long for its shortest waves, which need more "
-                           "than %d steps; a shorter pocket, narrower edges or lower sound speeds "
-                           "need fewer",
-                           STEPS_MAX);
+            return th_fail(
+                err, TH_EUNDECIDED,
+                "matching: the flow is too long for its shortest waves, which need more "
+                "than %d steps; a shorter flow (pocket, edges, padding, circumference) or "
+                "lower sound speeds need fewer",
+                STEPS_MAX);
         if (st == TH_OK)
             st = push(c->out, &step, err);
         if (st != TH_OK)
