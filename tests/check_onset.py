@@ -226,7 +226,7 @@ check("ring: text with frequencies", code == 0 and "frequency" in text and "ring
 # ---- messages
 for words, says in ((("--upto", "-1"), "length > 0"), (("--upto", "x"), "--upto"),
                     (("--orders", "0"), ">= 1"), (("--orders", "1.5"), "whole"),
-                    (("--samples", "1"), ">= 2"), (("--threads", "0"), ">= 1"),
+                    (("--samples", "1"), ">= 2"), (("--threads", "0"), "from 1 to 1024"),
                     (("--nothing",), "--nothing"),
                     (("--csv", "/nonexistent/x.csv"), "/nonexistent")):
     code, text, err = run(case(STEP), *words)
