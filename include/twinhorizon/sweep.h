@@ -89,7 +89,8 @@ typedef struct {
 
 /**
  * Give the modes of the next point their branches: each continues the mode of the previous point
- * whose linear continuation lies nearest, nearest pairs first; a pair farther apart than `reach`
+ * whose linear continuation lies nearest, nearest pairs first, those of a purely
+ * growing and an oscillating mode last; a pair farther apart than `reach`
  * (four times that for slow modes and for purely growing ones that turn into pairs) is
  * none, and modes without one start new branches in the order of the list, from 1.
  *

@@ -12,6 +12,7 @@
 #include "workspace.h"
 
 typedef struct {
+    bool turned; /* a last resort */
     double apart;
     int before, now;
 } pairing;
@@ -32,7 +33,10 @@ static double distance(const th_branches *line, size_t j, const th_point_mode *m
     const bool turned = turns(line, j, m);
     const double re = line->re[j] + (turned ? 0.0 : line->dre[j]);
     const double im = line->im[j] + (turned ? 0.0 : line->dim[j]);
-    const bool quick = turned || hypot(line->re[j], line->im[j]) < slow * reach;
+    /* of a turn the oscillating one must be slow: it has just come from zero, or is about to go */
+    const double size = turned && m->omega_re != 0.0 ? hypot(m->omega_re, m->omega_im)
+                                                     : hypot(line->re[j], line->im[j]);
+    const bool quick = size < slow * reach;
     const double apart = hypot(m->omega_re - re, m->omega_im - im);
 
     return apart <= (quick ? fast : 1.0) * reach ? apart : HUGE_VAL;
@@ -42,6 +46,8 @@ static int by_distance(const void *a, const void *b)
 {
     const pairing *x = a, *y = b;
 
+    if (x->turned != y->turned)
+        return x->turned ? 1 : -1;
     if (x->apart != y->apart)
         return x->apart < y->apart ? -1 : 1;
     if (x->before != y->before)
@@ -92,7 +98,7 @@ th_status th_branches_next(th_branches *line, const th_point *point, double reac
             const double apart = distance(line, j, &point->mode[i], reach);
 
             if (apart < HUGE_VAL)
-                pair[pairs++] = (pairing){apart, (int)j, (int)i};
+                pair[pairs++] = (pairing){turns(line, j, &point->mode[i]), apart, (int)j, (int)i};
         }
     if (pairs > 0) /* in place, where qsort may ask for memory */
         gsl_heapsort(pair, pairs, sizeof *pair, by_distance);
