@@ -152,6 +152,14 @@ report "the top level holds what it may hold" "$(cut -d/ -f1 <<<"$project" | sor
     grep -vE '^(src|include|tests|cases|Makefile|README\.md|DEVELOPERS\.md|LICENSE|\..*)$')"
 
 version=$(sed -n 's/^#define TH_VERSION "\(.*\)"/\1/p' include/twinhorizon/version.h)
+# ELF, archives, Python's and pictures' compiled forms do not belong into a source tree.
+report "no compiled file is part of the project" "$(while read -r file; do
+    case $(head -c 4 "$file" | od -An -c | tr -d ' ') in
+    177ELF | '!<ar' | '037213'*) echo "$file" ;;
+    esac
+    case $file in *.o | *.a | *.so | *.pyc | *.class) echo "$file" ;; esac
+done <<<"$project")"
+
 report "the version is written once" "$([ -n "$version" ] || echo "no TH_VERSION in version.h"
     grep -v -e '^include/twinhorizon/version\.h$' -e '^LICENSE$' <<<"$project" |
         xargs grep -nE "(^|[^0-9.])${version//./\\.}([^0-9.]|$)")"
