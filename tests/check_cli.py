@@ -4,6 +4,7 @@
 """Command lines that would lose a file, and where the program may write: check_cli.py PROGRAM
 prints TAP. Each wrong call gives one line on standard error, exit code 2 and leaves the files alone."""
 import os
+import re
 import subprocess
 import sys
 import tempfile
@@ -107,6 +108,22 @@ def main():
     refused("no pocket of a length", "onset", "edge.ini")
     done = run("solve", "my.ini", "--set", "ends.kind=walls", "--set", "ends.padding=1e9")
     check(done.returncode == 1 and "padding" in done.stderr, "too long a box has no answer", done.stderr)
+    # --time-limit: one sentence and no part of a file; a sweep goes on where it was
+    with open("slow.ini", "w", encoding="ascii") as file:
+        file.write(CASE.replace("gap = 2", "gap = 300") + "[ends]\nkind = open\n[sweep]\ngap = 300 to 301 in 400\n")
+    before = set(files())
+    done = run("plan", "slow.ini", "--time-limit", "1", "--csv", "late.csv")
+    check(done.returncode == 1 and "the time limit of 1 s is over" in done.stderr
+          and done.stderr.count("\n") == 1 and set(files()) == before, "a plan ends in time", done.stderr)
+    done = run("sweep", "slow.ini", "--time-limit", "2", "--out", "late")
+    first = re.match(r"(\d+) of 400 points finished", done.stdout)
+    check(done.returncode == 1 and first and 0 < int(first.group(1)) < 400, "a sweep keeps what is done",
+          done.stdout + done.stderr)
+    done = run("sweep", "slow.ini", "--time-limit", "2", "--out", "late", "--resume")
+    again = re.match(r"(\d+) of 400 points finished", done.stdout)
+    check(again and int(again.group(1)) > int(first.group(1)), "and goes on", done.stdout + done.stderr)
+    refused("whole number", "solve", "my.ini", "--time-limit", "0.5")
+    refused("given twice", "solve", "my.ini", "--time-limit", "5", "--time-limit", "6")
     print(f"1..{count}")
     return bad > 0
 

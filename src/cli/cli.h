@@ -49,8 +49,8 @@ typedef struct {
     char target[CLI_OUTPUTS_MAX][CLI_PATH_MAX]; /* where links lead */
 } cli_arguments;
 
-/* Read "CASE [--set ...] [options]". Prints one sentence and returns CLI_USAGE when it is wrong;
- * prints the help and returns -1 (exit 0) for --help. */
+/* Read "CASE [--set ...] [--time-limit S] [options]". Prints one sentence and returns CLI_USAGE
+ * when it is wrong; prints the help and returns -1 (exit 0) for --help. */
 int cli_read(const char *command, const char *summary, int argc, char **argv,
              const cli_option *option, int options, cli_arguments *out);
 
@@ -69,6 +69,12 @@ int cli_failed(const th_error *err);
 
 /* Print "twinhorizon: ..." as one line on standard error; returns CLI_USAGE. */
 int cli_usage(const char *format, ...) TH_PRINTF(1, 2);
+
+/* ---- limit.c -------------------------------------------------------------------------------- */
+
+/* Start the clock of --time-limit; nothing when text is NULL. */
+th_status cli_limit_start(const char *command, const char *text, const cli_arguments *arguments,
+                          th_error *err) TH_MUST_USE;
 
 /* ---- output.c ------------------------------------------------------------------------------- */
 

@@ -68,6 +68,8 @@ static void help(const char *command, const char *summary, const cli_option *opt
     }
     printf("\n\n%s\n\n", summary);
     printf("  %-22s %s\n", "--set SECTION.KEY=VALUE", "override or add a key of the case file");
+    printf("  %-23s %s\n", "--time-limit SECONDS",
+           "end after that time; a sweep keeps what is done");
     for (int i = 0; i < options; i++) {
         char both[64];
 
@@ -88,11 +90,12 @@ static const cli_option *find(const char *name, const cli_option *option, int op
 int cli_read(const char *command, const char *summary, int argc, char **argv,
              const cli_option *option, int options, cli_arguments *out)
 {
+    const char *limit = NULL;
     th_error err = {0};
 
     memset(out, 0, sizeof *out);
     for (int i = 0; i < argc; i++) {
-        const bool set = strcmp(argv[i], "--set") == 0;
+        const bool set = strcmp(argv[i], "--set") == 0, late = strcmp(argv[i], "--time-limit") == 0;
         const cli_option *found = find(argv[i], option, options);
         const bool alone = found != NULL && found->value == NULL;
 
@@ -100,7 +103,7 @@ int cli_read(const char *command, const char *summary, int argc, char **argv,
             help(command, summary, option, options);
             return -1;
         }
-        if (set || found != NULL) {
+        if (set || late || found != NULL) {
             if (!alone && i + 1 == argc)
                 return cli_usage("%s: %s wants a value", command, argv[i]);
             i += !alone;
@@ -108,6 +111,10 @@ int cli_read(const char *command, const char *summary, int argc, char **argv,
                 return cli_usage("%s: more than %d times --set", command, CLI_SET_MAX);
             if (set)
                 out->set[out->sets++] = argv[i];
+            else if (late && limit != NULL)
+                return cli_usage("%s: --time-limit is given twice", command);
+            else if (late)
+                limit = argv[i];
             else if (*found->place != NULL)
                 return cli_usage("%s: %s is given twice", command, found->name);
             else
@@ -131,7 +138,10 @@ int cli_read(const char *command, const char *summary, int argc, char **argv,
         if (option[i].use >= CLI_FILE && *option[i].place != NULL)
             out->output[out->outputs++] = &option[i];
     }
-    return cli_check_outputs(command, out, false, &err) == TH_OK ? CLI_DONE : cli_failed(&err);
+    if (cli_check_outputs(command, out, false, &err) != TH_OK ||
+        cli_limit_start(command, limit, out, &err) != TH_OK)
+        return cli_failed(&err);
+    return CLI_DONE;
 }
 
 th_status cli_whole(const char *command, const char *name, const char *text, int low, int high,

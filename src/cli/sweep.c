@@ -35,6 +35,7 @@ static void catch_signals(void)
     (void)sigemptyset(&action.sa_mask);
     (void)sigaction(SIGINT, &action, NULL);
     (void)sigaction(SIGTERM, &action, NULL);
+    (void)sigaction(SIGALRM, &action, NULL); /* --time-limit */
 }
 
 /* "K/N" */
