@@ -38,10 +38,10 @@ static const th_check rule[TH_CHECKS] = {
                          .title = "period of the static undulation over the resolution",
                          .limit = 1.0,
                          .above = true,
-                         .fails = "the imaging blurs ripples in the pocket: contrasts below are "
-                                  "not what the camera sees"},
+                         .fails = "the imaging blurs ripples in the pocket: the contrasts are not "
+                                  "what the camera sees"},
     [TH_CHECK_HEALING] = {.name = "healing",
-                          .title = "healing length in the pocket over the resolution",
+                          .title = "healing length at the horizons over the resolution",
                           .limit = 1.0,
                           .above = true,
                           .fails = "a measured profile of the edges is smoothed by the imaging; "
@@ -56,7 +56,7 @@ static const th_check rule[TH_CHECKS] = {
                             .limit = 1.0,
                             .above = true,
                             .fails = "the phase is not coherent along the pocket and the speed "
-                                     "fluctuates: the seeds below are not those of a condensate"},
+                                     "fluctuates: the seeds are not those of a condensate"},
     [TH_CHECK_LOSS] = {.name = "loss",
                        .title = "share of the atoms lost during the hold",
                        .limit = 0.1,
@@ -74,7 +74,7 @@ typedef struct {
     double c_upstream, c_most;
     double per_healing; /* least n/c, relative to upstream n = upstream density of the flow */
     double n_upstream, n_least;
-    double c_pocket; /* least c in a pocket; 0 without */
+    double n_most;
 } extremes;
 
 static void take(const th_flow_point *p, extremes *e)
@@ -82,8 +82,7 @@ static void take(const th_flow_point *p, extremes *e)
     e->c_most = fmax(e->c_most, p->c);
     e->n_least = fmin(e->n_least, p->n);
     e->per_healing = fmin(e->per_healing, p->n / p->c);
-    if (p->v > p->c && (e->c_pocket == 0.0 || p->c < e->c_pocket))
-        e->c_pocket = p->c;
+    e->n_most = fmax(e->n_most, p->n);
 }
 
 static extremes look(const th_flow *flow)
@@ -116,26 +115,29 @@ static void set(th_check *check, bool known, double value)
     check->holds = check->known && (check->above ? value >= check->limit : value <= check->limit);
 }
 
-/* a n where c is largest; 0 when it is not known. */
+/* The largest a n along the flow; 0 when it is not known. */
 static double a_n(const th_flow *flow, const th_experiment *x, const extremes *e)
 {
     const double q = x->transverse > 0.0 ? e->c_most * e->c_most / x->transverse : 0.0;
 
     if (th_flow_scattering(flow) > 0.0 && x->density > 0.0)
-        return th_flow_scattering(flow) * x->density; /* upstream; the flow knows its state */
+        return th_flow_scattering(flow) * x->density * e->n_most / e->n_upstream;
     return (q * q + sqrt(q * q * q * q + q * q)) / 2.0;
 }
 
-/* The largest kappa/c^2; 0 where a horizon is sharp or there is none. */
-static double steepness(const th_flow *flow, bool *sharp)
+/* The largest kappa/c^2 of smooth horizons, whether one is sharp or there is none, and the largest
+ * sound speed at a horizon. */
+static double steepness(const th_flow *flow, bool *sharp, double *speed)
 {
     int count;
     const th_horizon *horizon = th_flow_horizons(flow, &count);
     double most = 0.0;
 
     *sharp = count == 0;
+    *speed = 0.0;
     for (int i = 0; i < count; i++) {
         *sharp = *sharp || horizon[i].sharp;
+        *speed = fmax(*speed, horizon[i].speed);
         most = fmax(most, horizon[i].kappa / (horizon[i].speed * horizon[i].speed));
     }
     return most;
@@ -145,7 +147,7 @@ th_status th_validity_check(const th_flow *flow, const th_experiment *experiment
                             th_check check[TH_CHECKS], th_error *err)
 {
     const th_experiment *x = experiment;
-    double undulation = 0.0, y, distance, scale;
+    double undulation = 0.0, y, distance, scale, speed;
     const th_pocket *pocket;
     bool sharp;
     int pockets;
@@ -177,12 +179,12 @@ th_status th_validity_check(const th_flow *flow, const th_experiment *experiment
         sqrt(1.0 + 4.0 * y) - 1.0);
     set(&check[TH_CHECK_TRANSVERSE], y > 0.0, sqrt(1.0 + 4.0 * y));
     set(&check[TH_CHECK_MEAN_FIELD], x->density > 0.0, scale * e.per_healing);
-    y = steepness(flow, &sharp);
+    y = steepness(flow, &sharp, &speed);
     set(&check[TH_CHECK_KAPPA], !sharp, y);
     set(&check[TH_CHECK_RIPPLE], x->resolution > 0.0 && undulation > 0.0,
         2.0 * M_PI / (undulation * x->resolution));
-    set(&check[TH_CHECK_HEALING], x->resolution > 0.0 && e.c_pocket > 0.0,
-        1.0 / (e.c_pocket * x->resolution));
+    set(&check[TH_CHECK_HEALING], x->resolution > 0.0 && speed > 0.0,
+        1.0 / (speed * x->resolution));
     set(&check[TH_CHECK_THERMAL], x->temperature > 0.0,
         x->temperature / (e.c_upstream * e.c_upstream));
     set(&check[TH_CHECK_COHERENCE], x->temperature > 0.0 && x->density > 0.0 && distance > 0.0,

@@ -108,6 +108,15 @@ def main():
     refused("no pocket of a length", "onset", "edge.ini")
     done = run("solve", "my.ini", "--set", "ends.kind=walls", "--set", "ends.padding=1e9")
     check(done.returncode == 1 and "padding" in done.stderr, "too long a box has no answer", done.stderr)
+    # a table without noise, a strength that asks for more knots than there are: an answer, not a hang
+    for level in ("1", "1.1"):
+        with open("flat.csv", "w", encoding="ascii") as file:
+            file.write("x,speed,sound\n" + "".join(f"{i / 20},0.5,{level}\n" for i in range(1001)))
+        with open("flat.ini", "w", encoding="ascii") as file:
+            file.write("[units]\nsystem = reduced\n[flow]\nshape = table\nfile = flat.csv\nsmoothing = 0.2\n")
+        done = subprocess.run([PROGRAM, "flow", "flat.ini"], capture_output=True, text=True, check=False,
+                              timeout=60)
+        check(done.returncode == 0, f"a flat table of {level}", done.stderr)
     # --time-limit: one sentence and no part of a file; a sweep goes on where it was
     with open("slow.ini", "w", encoding="ascii") as file:
         file.write(CASE.replace("gap = 2", "gap = 300") + "[ends]\nkind = open\n[sweep]\ngap = 300 to 301 in 400\n")

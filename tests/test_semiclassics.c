@@ -622,7 +622,7 @@ static void test_errors(void **state)
     th_semiclassics s = {.count = 0};
 
     (void)state;
-    refused(step_flow(1, 1.5, 0.5, 1.5, 6), 0, TH_ENONE, "horizon at x = -3 is sharp");
+    refused(step_flow(1, 1.5, 0.5, 1.5, 6), 0, TH_ENONE, "the black-hole horizon is sharp");
     refused(tanh_flow(1.5, 0.5, 1.5, 1, 1, 9), 1, TH_EINVAL, "pocket = 1, want 0 <= pocket < 1");
     refused(tanh_flow(1.5, 0.5, 1.5, 1, 1, 9), -1, TH_EINVAL, "pocket = -1");
     refused(dips_flow(&d), 0, TH_ENONE, "at the frequencies of all levels");

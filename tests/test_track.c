@@ -133,28 +133,75 @@ static void test_step(void **state)
     th_track_destroy(t);
 }
 
+/* Nine samples become as many as the header says: each growth rate on the straight line between its
+ * neighbours to 2e-3 of the largest, or intervals below 2e-3 of the line; the uneven line has the
+ * same branches, and within its error bars the same gains, as a fine one. */
+static void test_coarse(void **state)
+{
+    const double from = 0.5, to = 12, line = to - from;
+    th_flow_setup s = step();
+    th_track *t = track_of(&s, from, to, 9, 1), *fine = track_of(&s, from, to, 2049, 1);
+    const th_track_point *p;
+    th_ramp r = ramp_of(t, 100), wanted = ramp_of(fine, 100);
+    double scale = 0;
+    int count;
+
+    (void)state;
+    p = th_track_points(t, &count);
+    assert_true(count > 50);
+    for (int i = 0; i < count; i++)
+        scale = fmax(scale, p[i].count > 0 ? p[i].mode[0].omega_im : 0);
+    for (int i = 1; i + 1 < count; i++) {
+        const double left = p[i].length - p[i - 1].length, right = p[i + 1].length - p[i].length;
+
+        if (p[i - 1].unstable != p[i].unstable || p[i + 1].unstable != p[i].unstable ||
+            fmax(left, right) <= 2e-3 * line)
+            continue;
+        for (int k = 0; k < p[i].count; k++)
+            close_to("growth", p[i].mode[k].omega_im,
+                     (right * p[i - 1].mode[k].omega_im + left * p[i + 1].mode[k].omega_im) /
+                         (left + right),
+                     2e-3 * scale);
+    }
+    assert_true(r.count == 3 && wanted.count == 3);
+    for (int j = 0; j < 3; j++) {
+        const th_track_gain *g = gain_of(&r, j), *w = gain_of(&wanted, j);
+
+        close_to("birth", g->from, switch_on(2 * j), 1e-4 * line);
+        close_to("gain", g->gain, w->gain, g->error + w->error);
+        assert_true(g->to == to && g->error < 5e-3 * g->gain);
+    }
+    th_ramp_clear(&r);
+    th_ramp_clear(&wanted);
+    th_track_destroy(t);
+    th_track_destroy(fine);
+}
+
 /* Growth rates of the fastest mode at many even lengths, by th_point_answer alone. */
 static void dense(const th_flow_setup *s, double from, double to, int count, double *growth)
 {
-    const th_point *none[2] = {NULL, NULL};
-    th_point point = {0};
+    th_point point[2] = {{0}, {0}};
 
     for (int i = 0; i < count; i++) {
+        const th_point *previous[2] = {i > 0 ? &point[(i + 1) % 2] : NULL, NULL};
+        th_point *p = &point[i % 2];
         th_flow_setup at = *s;
 
         at.value[th_shape_length(s->shape)] = from + (to - from) * i / (count - 1);
-        assert_int_equal(th_point_answer(&at, 1e-9, none, &point, NULL), TH_OK);
-        growth[i] = point.unstable > 0 ? point.mode[0].omega_im : 0;
+        assert_int_equal(th_point_answer(&at, 1e-9, previous, p, NULL), TH_OK);
+        assert_int_equal(p->state, TH_POINT_OK);
+        growth[i] = p->unstable > 0 ? p->mode[0].omega_im : 0;
     }
-    th_point_clear(&point);
+    th_point_clear(&point[0]);
+    th_point_clear(&point[1]);
 }
 
-/* One branch, through its merger at L_1: gain against a trapezoid of 4 times the first points;
- * both within the error bar of the gain. The maximum against the parabola through the best three.
- */
+/* One branch, through its merger at L_1: gain against a trapezoid of ten times the first points. At
+ * a square root k sqrt(d), here k = 0.11, that is off by 0.21 k h^1.5 at most: 2e-5 in the end. The
+ * maximum against the parabola through the best three. */
 static void test_gain(void **state)
 {
-    enum { COUNT = 1025 };
+    enum { COUNT = 2561 };
     static double growth[COUNT];
     const double from = 1.3, to = 5.4, step_length = (to - from) / (COUNT - 1);
     th_flow_setup s = step();
@@ -172,9 +219,9 @@ static void test_gain(void **state)
     }
     sum *= 60.0 / (COUNT - 1);
     assert_int_equal(r.count, 1);
-    close_to("gain", r.gain[0].gain, sum, r.gain[0].error);
+    close_to("gain", r.gain[0].gain, sum, r.gain[0].error + 2e-5);
     assert_true(r.gain[0].error < 2e-3 * sum);
-    close_to("best", r.best, sum, r.best_error);
+    close_to("best", r.best, sum, r.best_error + 2e-5);
     close_to("twice the time", twice.gain[0].gain / r.gain[0].gain, 2, 1e-12);
     assert_int_equal(th_track_best_find(t, &best, NULL), TH_OK);
     top =
@@ -190,26 +237,44 @@ static void test_gain(void **state)
     th_track_destroy(t);
 }
 
-/* The same bits whatever the threads. */
+/* The same bits whatever the threads: points, modes, branches, what is made of them. */
 static void test_threads(void **state)
 {
     th_flow_setup s = tanh_pocket();
     th_track *t[2] = {track_of(&s, 1, 6, 33, 1), track_of(&s, 1, 6, 33, 3)};
     const th_track_point *p[2];
+    th_track_best best[2];
+    th_ramp r[2];
     int count[2];
 
     (void)state;
-    for (int i = 0; i < 2; i++)
+    for (int i = 0; i < 2; i++) {
         p[i] = th_track_points(t[i], &count[i]);
+        r[i] = ramp_of(t[i], 70);
+        assert_int_equal(th_track_best_find(t[i], &best[i], NULL), TH_OK);
+    }
     assert_int_equal(count[0], count[1]);
     for (int i = 0; i < count[0]; i++) {
         assert_true(p[0][i].length == p[1][i].length && p[0][i].count == p[1][i].count);
-        for (int k = 0; k < p[0][i].count; k++)
+        assert_true(p[0][i].state == p[1][i].state && p[0][i].unstable == p[1][i].unstable);
+        for (int k = 0; k < p[0][i].count; k++) {
+            assert_int_equal(p[0][i].mode[k].branch, p[1][i].mode[k].branch);
             assert_memory_equal(&p[0][i].mode[k].omega_re, &p[1][i].mode[k].omega_re,
                                 3 * sizeof(double));
+        }
     }
-    th_track_destroy(t[0]);
-    th_track_destroy(t[1]);
+    assert_true(r[0].count == 2 && r[1].count == 2);
+    for (int k = 0; k < 2; k++) {
+        assert_int_equal(r[0].gain[k].branch, r[1].gain[k].branch);
+        assert_memory_equal(&r[0].gain[k].gain, &r[1].gain[k].gain, 7 * sizeof(double));
+    }
+    assert_true(r[0].best == r[1].best && r[0].worst == r[1].worst);
+    assert_true(best[0].length == best[1].length && best[0].omega_im == best[1].omega_im);
+    for (int i = 0; i < 2; i++) {
+        th_track_best_clear(&best[i]);
+        th_ramp_clear(&r[i]);
+        th_track_destroy(t[i]);
+    }
 }
 
 /* Nothing grows below the first switch-on; the end of a range is called one. */
@@ -298,31 +363,105 @@ static void test_failed(void **state)
     assert_non_null(strstr(err.text, "picky: gap = 1.5"));
 }
 
-/* A ring: stability bands. Births and deaths against th_onset's of tests/test_onset.c is that
- * test's matter; here the modes of each point are those of th_point_answer. */
-static void test_ring(void **state)
+/* A flow for some six hundredths of the line: the modes still make one branch. */
+static void test_narrow(void **state)
 {
-    th_flow_setup s =
-        setup_of("tanh", ring(50, 8), (const double[]){0, 1.4, 0.6, 1.4, 0.5, 0.5, 10});
-    th_track *t = track_of(&s, 9.9, 10.1, 3, 2);
-    const th_point *none[2] = {NULL, NULL};
-    th_point point = {0};
+    th_flow_setup s = step();
+    th_shape picky = *s.shape;
+    th_track *t;
+    th_ramp r;
+
+    (void)state;
+    picky.build = build_picky;
+    s.shape = &picky;
+    least = 1.85;
+    most = 1.92;
+    t = track_of(&s, 1.5, 2.5, 101, 1);
+    assert_int_equal(th_track_branches(t), 1);
+    r = ramp_of(t, 10);
+    assert_true(r.count == 1 && r.gain[0].from >= least && r.gain[0].to <= most);
+    close_to("gain", r.gain[0].gain, r.best, 1e-12);
+    th_ramp_clear(&r);
+    th_track_destroy(t);
+}
+
+/* A sample on a switch-on to the last bit is undecided; the change is found beside it all the same.
+ */
+static void test_on_switch(void **state)
+{
+    const double birth = switch_on(2), line = 2;
+    th_flow_setup s = step();
+    th_track *t = track_of(&s, birth - 1, birth + 1, 65, 1);
     const th_track_point *p;
-    int count;
+    th_track_best best;
+    th_ramp r = ramp_of(t, 100);
+    int count, at = 0;
 
     (void)state;
     p = th_track_points(t, &count);
-    assert_true(count >= 3);
-    for (int i = 0; i < count; i += count - 1) {
-        th_flow_setup at = s;
+    while (at < count && p[at].state == TH_POINT_OK)
+        at++;
+    assert_true(at > 0 && at + 1 < count && p[at].count == 0);
+    close_to("undecided", p[at].length, birth, 1e-12);
+    assert_true(p[at + 1].length - p[at - 1].length <= 2e-4 * line);
+    close_to("birth", gain_of(&r, 1)->from, birth, 1e-4 * line);
+    assert_int_equal(th_track_best_find(t, &best, NULL), TH_OK);
+    assert_true(best.clean_count == 1 && best.clean[0].open_below && !best.clean[0].open_above);
+    close_to("clean to", best.clean[0].to, birth, 1e-4 * line);
+    th_track_best_clear(&best);
+    th_ramp_clear(&r);
+    th_track_destroy(t);
+}
 
-        at.value[th_shape_length(s.shape)] = p[i].length;
-        assert_int_equal(th_point_answer(&at, 1e-9, none, &point, NULL), TH_OK);
-        assert_int_equal(point.unstable, p[i].unstable);
-        assert_true(p[i].count > 0 && p[i].unstable > 0);
-        close_to("fastest", p[i].mode[0].omega_im, point.mode[0].omega_im, 1e-12);
+/* A ring on which an oscillating pair dies as it collides with one of opposite energy. There the
+ * square of the difference of both frequencies, and so (Im omega)^2, is analytic in the length and
+ * passes zero: three samples farther off say where. The first point against th_point_answer. */
+static void test_ring(void **state)
+{
+    const double from = 9.70, to = 9.73, line = to - from;
+    th_flow_setup s =
+        setup_of("tanh", ring(50, 8), (const double[]){0, 1.4, 0.6, 1.4, 0.5, 0.5, 10});
+    th_track *t = track_of(&s, from, to, 5, 2);
+    const th_point *none[2] = {NULL, NULL};
+    th_point point = {0};
+    const th_track_point *p;
+    const th_track_gain *dies;
+    th_ramp r = ramp_of(t, 10);
+    double x[3], square[3], zero, slope, bend;
+    int count, samples = 0, after = 0, last = -1;
+
+    (void)state;
+    p = th_track_points(t, &count);
+    assert_int_equal(th_track_branches(t), 3);
+    dies = gain_of(&r, 2); /* the slowest at the short end */
+    for (int i = 0; i < count; i++) {
+        assert_int_equal(p[i].state, TH_POINT_OK);
+        assert_int_equal(p[i].count, p[i].length <= dies->to ? 3 : 2);
+        assert_int_equal(p[i].unstable, p[i].length <= dies->to ? 5 : 3);
+        after += p[i].length > dies->to;
+        if (p[i].length <= dies->to)
+            last = i;
+        if (samples < 3 && p[i].length <= from + 0.51 * line) { /* 9.7, 9.7075, 9.715 */
+            x[samples] = p[i].length;
+            square[samples] = p[i].mode[2].omega_im * p[i].mode[2].omega_im;
+            samples++;
+        }
     }
+    assert_true(samples == 3 && after > 0 && dies->from == from);
+    assert_true(p[last].length == dies->to && p[last + 1].length - dies->to <= 1e-3 * line);
+    close_to("spacing", x[2] - x[1], x[1] - x[0], 1e-12);
+    slope = (square[2] - square[1]) / (x[2] - x[1]);
+    bend = (square[2] - 2 * square[1] + square[0]) / (x[2] - x[1]) / (x[2] - x[1]);
+    zero = x[2];
+    for (int i = 0; i < 20; i++) /* of the parabola: contracts by bend/slope times 2e-3 */
+        zero = x[2] - (square[2] + 0.5 * bend * (zero - x[2]) * (zero - x[1])) / slope;
+    close_to("collision", 0.5 * (dies->to + p[last + 1].length), zero, 2e-3 * line);
+    s.value[th_shape_length(s.shape)] = from;
+    assert_int_equal(th_point_answer(&s, 1e-9, none, &point, NULL), TH_OK);
+    assert_int_equal(point.unstable, p[0].unstable);
+    close_to("fastest", p[0].mode[0].omega_im, point.mode[0].omega_im, 1e-12);
     th_point_clear(&point);
+    th_ramp_clear(&r);
     th_track_destroy(t);
 }
 
@@ -355,6 +494,7 @@ static void test_errors(void **state)
     assert_int_equal(th_track_create(&s, NULL, &t, NULL), TH_EINVAL);
     assert_int_equal(th_track_create(&s, &good, NULL, NULL), TH_EINVAL);
     assert_int_equal(th_track_create(&s, &good, &t, NULL), TH_OK);
+    assert_int_equal(th_track_ramp(t, 1, NULL, NULL), TH_EINVAL);
     assert_int_equal(th_track_ramp(t, 0, &r, NULL), TH_EINVAL);
     assert_int_equal(th_track_ramp(t, NAN, &r, NULL), TH_EINVAL);
     assert_int_equal(th_track_best_find(t, NULL, NULL), TH_EINVAL);
@@ -401,10 +541,12 @@ static void test_memory(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(test_step),    cmocka_unit_test(test_gain),
-        cmocka_unit_test(test_threads), cmocka_unit_test(test_edges),
-        cmocka_unit_test(test_failed),  cmocka_unit_test(test_ring),
-        cmocka_unit_test(test_errors),  cmocka_unit_test(test_memory),
+        cmocka_unit_test(test_step),   cmocka_unit_test(test_coarse),
+        cmocka_unit_test(test_gain),   cmocka_unit_test(test_threads),
+        cmocka_unit_test(test_edges),  cmocka_unit_test(test_failed),
+        cmocka_unit_test(test_narrow), cmocka_unit_test(test_on_switch),
+        cmocka_unit_test(test_ring),   cmocka_unit_test(test_errors),
+        cmocka_unit_test(test_memory),
     };
 
     openblas_set_num_threads(1);

@@ -52,7 +52,7 @@ static void test_step(void **state)
     number(&check[TH_CHECK_MEAN_FIELD], 40 / 1.5, true); /* n/c where c is largest */
     assert_false(check[TH_CHECK_KAPPA].known);           /* sharp horizons */
     number(&check[TH_CHECK_RIPPLE], 2 * pi / (2 * sqrt(0.75) * 2), true);
-    number(&check[TH_CHECK_HEALING], 1 / (0.5 * 2), true);
+    number(&check[TH_CHECK_HEALING], 1 / (1.0 * 2), false); /* (1.5 + 0.5)/2 at a jump */
     number(&check[TH_CHECK_THERMAL], 0.2 / 2.25, true);
     number(&check[TH_CHECK_COHERENCE], 2 * 40 / (0.2 * 6), true);
     number(&check[TH_CHECK_LOSS], 1 - exp(-0.06), true);
@@ -70,7 +70,7 @@ static void test_step(void **state)
            sqrt(1 + 2 * (2.25 * 2.25 + sqrt(pow(2.25, 4) + 2.25 * 2.25))), false);
     number(&check[TH_CHECK_MEAN_FIELD], 14 / 1.5, false);
     number(&check[TH_CHECK_RIPPLE], 2 * pi / (2 * sqrt(0.75) * 5), false);
-    number(&check[TH_CHECK_HEALING], 1 / (0.5 * 5), false);
+    number(&check[TH_CHECK_HEALING], 1 / (1.0 * 5), false);
     number(&check[TH_CHECK_THERMAL], 5 / 2.25, false);
     number(&check[TH_CHECK_COHERENCE], 28 / 30.0, false);
     number(&check[TH_CHECK_LOSS], 1 - exp(-0.2), false);

@@ -50,7 +50,7 @@ void th_axis_set(int key, double value, th_flow_setup *setup);
 /* Contrast that counts as visible unless told; common practice, no source. */
 #define TH_VISIBILITY 0.1
 
-/* [plan], in SI or reduced units as the case; 0 when absent. */
+/* [plan], in reduced units; 0 when absent. */
 typedef struct {
     bool present; /* a [plan] section or key was given, the section may be empty */
     double hold_time, lifetime, temperature; /* reduced units (temperature: k_B T) */

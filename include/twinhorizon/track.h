@@ -4,7 +4,7 @@
  * The growing modes along a line of pocket lengths, each followed as one branch: what a ramp of the
  * length gains, which length grows fastest, over which lengths a single mode grows. What goes in: a
  * configuration, the ends of the line. What comes out: certified points, branches, integrals and
- * maxima over them. Depends on point, sweep (branches), onset, flow, status. Reduced units. */
+ * maxima over them. Depends on point, sweep (branches), flow, status. Reduced units. */
 #ifndef TWINHORIZON_TRACK_H
 #define TWINHORIZON_TRACK_H
 
@@ -83,7 +83,7 @@ typedef struct {
     int count;
     th_track_gain *gain; /* [count] largest gain first; caller's, freed with th_ramp_clear */
     double best;         /* Int max Im omega dt: no single branch can gain more */
-    double best_error;
+    double best_error;   /* sum of the branches' errors */
     double dominant;     /* the length at which the mode with the largest gain grows fastest */
     double unanswered;   /* share of the line between points without an answer, 0..1 */
     double worst;        /* largest |d omega/dt|/distance^2 of the leading branch to another one; 0

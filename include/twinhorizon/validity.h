@@ -32,7 +32,7 @@ typedef enum {
     TH_CHECK_MEAN_FIELD, /* atoms per healing length, the fewest along the flow */
     TH_CHECK_KAPPA,      /* largest surface gravity over c^2 at its horizon */
     TH_CHECK_RIPPLE,     /* period of the static undulation over the imaging resolution */
-    TH_CHECK_HEALING,    /* healing length in the pocket over the imaging resolution */
+    TH_CHECK_HEALING,    /* shortest healing length at a horizon over the imaging resolution */
     TH_CHECK_THERMAL,    /* k_B T over m c^2 far upstream */
     TH_CHECK_COHERENCE,  /* thermal phase coherence length 2 n/T over the horizon distance */
     TH_CHECK_LOSS,       /* share of the atoms lost during the hold */

@@ -5,7 +5,7 @@
  * In: path or text, overrides. Out: a th_case whose base flow can be built, or a sentence that
  * says which rule was broken where. Calls source, keys, value, sweep, plan, canon, flow, units.
  * Symbols: hbar = m = 1 in reduced units; the unit of speed of an SI case is sound_upstream, or
- * speed where a shape has no sound_upstream.
+ * speed where a shape has no sound_upstream, or the median of the table's sound speeds.
  * To add a section: keys.h, and a function here, called from read_sections.
  * Proved by tests/test_case.c and tests/broken. */
 #define _POSIX_C_SOURCE 200809L

@@ -19,6 +19,10 @@ static void print_growth(FILE *out, const cli_findings *p, const cli_view *v)
     if (s->verdict == TH_VERDICT_UNDECIDED)
         fprintf(out, "Undecided   %s; what follows holds for the modes that were found\n",
                 s->reason);
+    if (fastest == NULL && s->verdict == TH_VERDICT_UNDECIDED) {
+        fputs("Growth      no growing mode was found; whether one is there is undecided\n", out);
+        return;
+    }
     if (fastest == NULL) {
         fputs("Growth      none: nothing will grow out of this flow as it stands\n", out);
         return;
@@ -98,7 +102,12 @@ static void print_tell(FILE *out, const cli_findings *p, const cli_view *v)
             continue;
         }
         fprintf(out, "mode %d from the static undulation: %s", i + 1,
-                !t->imaged   ? "NO, its ripple is finer than the imaging"
+                !t->imaged ? "NO, its ripple is finer than the imaging"
+                : !t->growth && t->frequency
+                    ? "by its motion only, it grows by less than e in the second half of the hold"
+                : !t->growth && t->wavenumber
+                    ? "by its wave number only, it grows by less than e in "
+                      "the second half of the hold"
                 : !t->growth ? "hardly, it grows by less than e in the second half of the hold"
                 : ways == 1  ? "by its growth only"
                 : t->frequency && t->wavenumber ? "yes, by growth, motion and wave number"
@@ -136,7 +145,7 @@ static void print_drift(FILE *out, const cli_findings *p, const cli_view *v)
     if (t->visible_known)
         fprintf(out, ", visibly within the hold with %.3g +- %.1g%s", t->visible.value,
                 t->visible.error, t->visible.value < sure ? ": a run may show nothing" : "");
-    if (t->keys > 0)
+    if (t->keys > 0 && t->key[0].share > t->key[0].share_error)
         fprintf(out, "; `%s` matters most", p->c->setup.shape->key[t->key[0].key].key);
     fputc('\n', out);
 }

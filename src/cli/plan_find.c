@@ -90,7 +90,8 @@ static th_status find_seed(const cli_findings *p, double temperature, cli_plan_s
 
     s->temperature = temperature;
     if (p->growing == 0) {
-        missing(&s->part, "nothing grows");
+        missing(&s->part, p->solution->verdict == TH_VERDICT_UNDECIDED ? "no growing mode was found"
+                                                                       : "nothing grows");
         return TH_OK;
     }
     if (!p->c->density_given) {
@@ -197,7 +198,7 @@ static th_status find_best(cli_findings *p, int threads, th_error *err)
     th_error why = {0};
     th_status st;
 
-    if (key < 0 || (!p->c->setup.given[key] && !p->c->plan.has_range)) {
+    if (key < 0 || (!(p->c->setup.value[key] > 0.0) && !p->c->plan.has_range)) {
         missing(&p->best_part, "the case has no length of a pocket");
         return TH_OK;
     }

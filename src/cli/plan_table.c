@@ -13,7 +13,6 @@ typedef struct {
     th_status st;
     const char *topic;
     char item[32];
-    double from, to; /* lengths of the item; from == to == 0: none */
 } writer;
 
 static void row(writer *w, const char *quantity, double value, double error, bool has_error,
@@ -30,7 +29,7 @@ static void row(writer *w, const char *quantity, double value, double error, boo
     if (text != NULL)
         th_table_put_nothing(w->table);
     else
-        th_table_put_number(w->table, value * factor);
+        th_table_put_exact(w->table, value * factor);
     if (has_error)
         th_table_put_number(w->table, error * factor);
     else
@@ -73,11 +72,11 @@ static void named(writer *w, const char *topic, const char *name)
     (void)snprintf(w->item, sizeof w->item, "%s", name);
 }
 
-/* Whether a part has an answer; else its reason is the row. */
+/* Whether a part has an answer; else its reason is the row, of the item that is set. */
 static bool answered(writer *w, const char *topic, const cli_part *part)
 {
     if (!part->known) {
-        named(w, topic, "");
+        w->topic = topic;
         put_word(w, "not_known", part->why);
     }
     return part->known;
@@ -140,9 +139,9 @@ static void put_seed(writer *w, const char *name, const cli_plan_seed *s)
     const th_seed_mode *mode;
     int count;
 
+    named(w, name, "");
     if (p->growing == 0 || !answered(w, name, &s->part))
         return;
-    named(w, name, "");
     put(w, "visibility", p->c->plan.visibility, TH_DIM_NUMBER);
     if (s->visible)
         put(w, "visible_after", s->visible_time, TH_DIM_TIME);
@@ -170,9 +169,9 @@ static void put_ramp(writer *w, th_dimension length)
 {
     const th_ramp *r = &w->p->ramp;
 
+    named(w, "ramp", "");
     if (!answered(w, "ramp", &w->p->ramp_part))
         return;
-    named(w, "ramp", "");
     put_with(w, "efoldings_most", r->best, r->best_error, TH_DIM_NUMBER);
     put(w, "not_answered", r->unanswered, TH_DIM_NUMBER);
     if (r->count > 0) {
@@ -197,9 +196,9 @@ static void put_best(writer *w, th_dimension length)
 {
     const th_track_best *b = &w->p->best;
 
+    named(w, "length", "");
     if (!answered(w, "length", &w->p->best_part))
         return;
-    named(w, "length", "");
     put(w, "from", w->p->range_from, length);
     put(w, "to", w->p->range_to, length);
     if (b->grows) {
@@ -227,9 +226,9 @@ static void put_tolerance(writer *w)
 {
     const th_tolerance *t = &w->p->tolerance;
 
+    named(w, "tolerance", "");
     if (!answered(w, "tolerance", &w->p->tolerance_part))
         return;
-    named(w, "tolerance", "");
     put(w, "samples", t->samples, TH_DIM_NUMBER);
     put(w, "failed", t->failed, TH_DIM_NUMBER);
     put(w, "undecided", t->undecided, TH_DIM_NUMBER);
@@ -262,9 +261,9 @@ static void put_semiclassics(writer *w)
         const cli_plan_pocket *at = &w->p->pocket[i];
         const th_semiclassics *s = &at->answer;
 
+        item(w, "wkb", i + 1);
         if (!answered(w, "wkb", &at->part))
             continue;
-        item(w, "wkb", i + 1);
         put(w, "levels", s->levels, TH_DIM_NUMBER);
         put(w, "kappa_over_band", s->thermal, TH_DIM_NUMBER);
         put(w, "kappa_over_sound_squared", s->steepness, TH_DIM_NUMBER);

@@ -19,6 +19,14 @@ static const char *cell(bool known, double value, char buffer[CLI_NUMBER])
     return buffer;
 }
 
+static const char *percent(bool known, double share, char buffer[CLI_NUMBER])
+{
+    if (!known)
+        return strcpy(buffer, "-");
+    (void)snprintf(buffer, CLI_NUMBER, "%.0f%%", 100.0 * share);
+    return buffer;
+}
+
 static void print_rest(FILE *out, int count)
 {
     if (count > ROWS)
@@ -74,8 +82,9 @@ static void print_modes(FILE *out, const cli_findings *p, const cli_view *v)
         const th_pattern_side *up = &m->pattern.upstream, *down = &m->pattern.downstream;
         char hold[CLI_NUMBER], life[CLI_NUMBER], inside[CLI_NUMBER], speed[CLI_NUMBER];
         char left[CLI_NUMBER], right[CLI_NUMBER], frequency[CLI_NUMBER], words[CLI_NUMBER];
+        char single[CLI_NUMBER];
 
-        fprintf(out, "%11s %4d %13s %12.5g %8s %8s %9s %9s %9s %9s %5.0f%%  %s\n", "", i + 1,
+        fprintf(out, "%11s %4d %13s %12.5g %8s %8s %9s %9s %9s %9s %6s  %s\n", "", i + 1,
                 cli_number(re * v->frequency, m->mode->omega_error * v->frequency, frequency),
                 v->time / im, cell(ask->hold_time > 0.0, im * ask->hold_time, hold),
                 cell(ask->lifetime > 0.0, im * ask->lifetime, life),
@@ -85,7 +94,7 @@ static void print_modes(FILE *out, const cli_findings *p, const cli_view *v)
                      re / m->pattern.wavenumber * v->speed, speed),
                 cell(moves && up->known, 2.0 * M_PI / fabs(up->wavenumber) * v->length, left),
                 cell(moves && down->known, 2.0 * M_PI / fabs(down->wavenumber) * v->length, right),
-                100.0 * m->pattern.share, told_by(p, m, words));
+                percent(m->part.known, m->pattern.share, single), told_by(p, m, words));
     }
     print_rest(out, p->growing);
     pocket = th_flow_pockets(p->flow, &pockets);
@@ -176,8 +185,8 @@ static void print_ramp(FILE *out, const cli_findings *p, const cli_view *v)
         fputs("nothing grows on the way\n", out);
         return;
     }
-    fprintf(out, "%.3g e-foldings at most; %s = %.4g does most\n", r->best, key->key,
-            r->dominant * unit);
+    fprintf(out, "%.3g e-foldings%s; %s = %.4g does most\n", r->best,
+            r->unanswered > 0.0 ? "" : " at most", key->key, r->dominant * unit);
     fprintf(out, "            %6s %10s %8s %22s %10s %10s %9s\n", "branch", "e-foldings", "+-",
             "between", "fastest at", v->si ? "growth*s" : "growth", "doubtful");
     for (int i = 0; i < r->count && i < ROWS; i++) {
@@ -221,13 +230,13 @@ static void print_range(FILE *out, const cli_findings *p, const cli_view *v)
             b->omega_re * v->frequency, v->hertz,
             b->at_end ? "; this is an end of the range, beyond it may be faster" : "");
     for (int i = 0; i < b->clean_count && i < ROWS; i++)
-        fprintf(
-            out,
-            "            a single growing mode from %s%.5g to %.5g%s%s; there fastest %.4g%s at "
-            "%.4g%s\n",
-            b->clean[i].open_below ? "(start) " : "", b->clean[i].from * unit,
-            b->clean[i].to * unit, b->clean[i].open_above ? " (end)" : "", word,
-            b->clean[i].growth * v->rate, v->per_second, b->clean[i].fastest * unit, word);
+        fprintf(out,
+                "            a single growing mode from %s%.5g to %.5g%s%s; there fastest %.4g%s "
+                "at about "
+                "%.4g%s\n",
+                b->clean[i].open_below ? "(start) " : "", b->clean[i].from * unit,
+                b->clean[i].to * unit, b->clean[i].open_above ? " (end)" : "", word,
+                b->clean[i].growth * v->rate, v->per_second, b->clean[i].fastest * unit, word);
     print_rest(out, b->clean_count);
     if (b->clean_count == 0)
         fputs("            no stretch has a single growing mode\n", out);
@@ -282,16 +291,27 @@ static void print_tolerance(FILE *out, const cli_findings *p, const cli_view *v)
         out);
 }
 
-/* What a level of this frequency is worth: see semiclassics.h for what was measured. */
-static const char *worth(const th_semiclassics *s, const th_semiclassical_mode *m)
+/* Up to where levels are worth something, as it was measured: semiclassics.h, from "How far to
+ * trust it" on. e = omega/kappa. */
+static const double e_least = 0.1, e_growth = 1.3, e_flat = 0.4, thermal_most = 3.0, matched = 0.05,
+                    rough_most = 6.0;
+
+static const char *worth(const th_semiclassics *s, int level)
 {
+    const th_semiclassical_mode *m = &s->mode[level];
     const double e = m->omega / fmax(s->kappa_black, s->kappa_white);
 
-    if (e < 0.1)
+    if (e < e_least)
         return "no: far below kappa";
-    if (s->thermal > 3.0)
+    if (s->thermal > thermal_most)
         return "no: edges too steep";
-    return s->impedance < 0.05 || e < 0.4 ? "roughly, growth too" : "frequency only";
+    if (level + 1 == s->count && s->roughness > rough_most)
+        return "no: too few waves";
+    if (m->level == 0)
+        return "frequency only: next to the top of the band";
+    if (s->impedance < matched)
+        return e < e_growth ? "frequency; growth roughly" : "frequency only";
+    return e < e_flat ? "frequency; growth is a lower estimate" : "frequency only";
 }
 
 static void print_pocket(FILE *out, const cli_view *v, const cli_plan_pocket *at)
@@ -321,7 +341,7 @@ static void print_pocket(FILE *out, const cli_view *v, const cli_plan_pocket *at
                 cell(e != NULL, e != NULL ? e->omega_re * v->frequency : 0.0, frequency),
                 m->round_trip * v->time, m->growth * v->rate, m->growth_low * v->rate,
                 m->growth_high * v->rate,
-                cell(e != NULL, e != NULL ? e->omega_im * v->rate : 0.0, growth), worth(s, m));
+                cell(e != NULL, e != NULL ? e->omega_im * v->rate : 0.0, growth), worth(s, i));
     }
     print_rest(out, s->count);
 }

@@ -104,9 +104,13 @@ th_status th_plateau_find(th_trap *trap, const th_upstream *up, const th_gll *ru
     for (;;) {
         st = at_width(trap, up, rule, width, good > 0 ? &last : NULL, good, &now, err);
         if (st == TH_ENONE && good > 0 && factor > NARROW) { /* a shorter step */
+            const double failed = width;
+
             th_stationary_clear(&now);
-            factor = sqrt(factor);
-            width = good * factor;
+            while (width >= failed && factor > NARROW) {
+                factor = sqrt(factor);
+                width = good * factor;
+            }
             continue;
         }
         if (st != TH_OK || width >= target)
@@ -128,6 +132,11 @@ th_status th_plateau_find(th_trap *trap, const th_upstream *up, const th_gll *ru
                          "width = %.6g: no depth makes a supersonic plateau; edges narrower than "
                          "about %.2g do",
                          target, good);
+    else if (st == TH_ENONE && !(trap->half > 0))
+        st =
+            th_fail_key(err, TH_EINVAL, "mach",
+                        "mach = %.6g: no depth makes a supersonic plateau, however narrow the edge",
+                        up->v_u / up->state.c_u);
     else if (st == TH_ENONE)
         st = th_fail_key(err, TH_EINVAL, "gap",
                          "gap = %.6g: no depth makes a supersonic plateau in so short a pocket",

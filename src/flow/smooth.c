@@ -85,8 +85,8 @@ static bool mark_worth(work *w)
 {
     const level *c = &w->coarse, *f = &w->fine;
     const th_smooth_rows *r = w->rows;
-    double enough = worth * fmax(th_smooth_variance(&w->measure, f), w->rounding);
-    int row = 0, count;
+    const double enough = worth * fmax(th_smooth_variance(&w->measure, f), w->rounding);
+    int row = 0, count = c->intervals;
 
     for (int i = 0; i < c->intervals; i++) {
         for (w->gain[i] = 0; row < r->rows && c->interval[row] == i; row++)
@@ -95,15 +95,18 @@ static bool mark_worth(work *w)
         if (r->strength > 0 && c->knot[i + 1] - c->knot[i] > r->strength)
             w->gain[i] = HUGE_VAL; /* a given strength, and no knots, says what is smoothed */
     }
-    for (;; enough *= 2) {
-        count = c->intervals;
-        for (int i = 0; i < c->intervals; i++)
-            count += w->halve[i] && w->gain[i] > enough;
-        if (count <= TH_SMOOTH_INTERVALS)
-            break;
-    }
-    for (int i = 0; i < c->intervals; i++)
+    for (int i = 0; i < c->intervals; i++) {
         w->halve[i] = w->halve[i] && w->gain[i] > enough;
+        count += w->halve[i];
+    }
+    for (; count > TH_SMOOTH_INTERVALS; count--) { /* the one that is worth least stays whole */
+        int least = -1;
+
+        for (int i = c->intervals - 1; i >= 0; i--)
+            if (w->halve[i] && (least < 0 || w->gain[i] < w->gain[least]))
+                least = i;
+        w->halve[least] = false;
+    }
     return count > c->intervals;
 }
 

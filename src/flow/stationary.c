@@ -119,7 +119,7 @@ static double longest(const th_stationary *s, double scale, double x)
         length = fmin(length, fmax(own, 0.5 * fabs(x - f->x)));
     }
     if (x > s->trap->edge[0] && x < s->trap->edge[s->trap->pieces])
-        length = fmin(length, s->trap->features > 0 ? fmax(scale, 0) : scale);
+        length = fmin(length, scale);
     return PART * length;
 }
 
@@ -186,8 +186,10 @@ th_status th_stationary_create(const th_trap *trap, const th_upstream *up, bool 
     if (total > ELEMENTS_MAX)
         return th_fail_key(err, TH_EINVAL, "mach",
                            "the flow varies over %.2g healing lengths, so that it needs more than "
-                           "%d elements; a larger Mach number or a shorter gap needs fewer",
-                           scale * up->state.c_u, (int)ELEMENTS_MAX);
+                           "%d elements; %s or a shorter potential needs fewer",
+                           scale * up->state.c_u, (int)ELEMENTS_MAX,
+                           scale * up->state.c_u > 1 ? "a Mach number farther from 1"
+                                                     : "a larger Mach number");
     nodes = (size_t)total * (size_t)rule->order + 1;
     out->elements = total;
     out->at = th_alloc((size_t)total + 1, sizeof *out->at);

@@ -194,9 +194,9 @@ static th_status check_ends(const reader *r, th_error *err)
     const th_table *t = r->table;
 
     for (int curve = 0; curve < t->curves; curve++)
-        for (int i = 0; i <= 2 * PLACES; i++) {
+        for (int i = 0; i < 2 * (PLACES + 1); i++) {
             const bool right = i > PLACES;
-            const double u = (double)(right ? i - PLACES : i) / PLACES * t->taper;
+            const double u = (double)(right ? i - PLACES - 1 : i) / PLACES * t->taper;
             const double x = right ? t->last - u : t->first + u;
             const th_smooth *s = &t->fit[curve];
             const int at = th_spline_find(s->intervals, s->knot, x);

@@ -224,11 +224,6 @@ int th_trap_piece(const th_trap *t, double x)
     return piece;
 }
 
-bool th_trap_has_plateau(const th_trap *t)
-{
-    return t->kind != TH_TRAP_TABLE;
-}
-
 double th_trap_plateau(const th_trap *t)
 {
     const bool one = t->kind == TH_TRAP_STEP || t->kind == TH_TRAP_BARRIER;

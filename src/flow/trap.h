@@ -55,8 +55,6 @@ double th_trap_next_cut(const th_trap *trap, double x);
 /** The piece that holds x, the right one at an edge. */
 int th_trap_piece(const th_trap *trap, double x);
 
-/** Whether half of the problem is enough: f(-x) = f(x), or f is constant from the middle on. */
-bool th_trap_has_plateau(const th_trap *trap);
 /** Where a plateau is: 0 between two edges, beyond the only one. */
 double th_trap_plateau(const th_trap *trap);
 

@@ -290,7 +290,6 @@ static th_status answer_open(answer *a, double accuracy, const th_point *const p
 static th_status answer_point(const th_flow_setup *setup, double accuracy, bool brief,
                               const th_point *const previous[2], th_point *point, th_error *err)
 {
-    const long number = point->number;
     th_flow *flow = NULL;
     th_error why = {0};
     answer a = {.point = point, .brief = brief};
@@ -313,7 +312,6 @@ static th_status answer_point(const th_flow_setup *setup, double accuracy, bool 
     th_matching_destroy(a.usual);
     th_matching_destroy(a.fine);
     th_flow_destroy(flow);
-    point->number = number;
     if (st == TH_OK)
         return TH_OK;
     if (st == TH_ENOMEM || st == TH_EBUG) {

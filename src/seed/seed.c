@@ -229,6 +229,11 @@ th_status th_seed_create(const th_flow *flow, const th_solution *solution,
     st = th_seed_project(flow, &coarse, options->temperature, s->answer.known, omega, &rough, err);
     if (st != TH_OK)
         goto done;
+    if (rough.known != s->answer.known) { /* of the slowest modes only one of the two has a mesh */
+        st = th_fail(err, TH_EUNDECIDED, "seed: %d and %d modes on two discretisations",
+                     s->answer.known, rough.known);
+        goto done;
+    }
     /* Q and the commutator are proportional to n: covariances to 1/n */
     th_flow_eval(flow, -1, th_flow_edges(flow, &edges)[0], &upstream);
     shape_density = upstream.n;
@@ -311,8 +316,15 @@ th_status th_seed_time(const th_seed *seed, double contrast, double *time, th_er
     *time = 0.0;
     if (now >= contrast)
         return TH_OK;
-    /* reached when the fastest mode alone has it; e^-1 more allows for interference */
-    high = (log(contrast / seed->mode[0].amplitude) + 1.0) / seed->mode[0].omega_im;
+    /* about when the fastest mode alone has it; later where purely growing ones interfere */
+    high = fmax(1.0, log(contrast / seed->mode[0].amplitude) + 1.0) / seed->mode[0].omega_im;
+    for (;; high *= 2.0) {
+        st = th_seed_total(seed, high, &now, &place, err);
+        if (st != TH_OK)
+            return st;
+        if (now >= contrast)
+            break;
+    }
     while (high - low > 4.0 * GSL_DBL_EPSILON * high) {
         const double middle = low + 0.5 * (high - low);
 

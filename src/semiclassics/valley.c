@@ -80,10 +80,8 @@ static th_status find_horizons(th_valley *valley, double around, th_error *err)
         if (!white && !black)
             continue;
         if (h[i].sharp || !(h[i].kappa > 0))
-            return th_fail(err, TH_ENONE,
-                           "semiclassics: the %s-hole horizon at x = %g %s, want a smooth one with "
-                           "a surface gravity above 0",
-                           white ? "white" : "black", h[i].x,
+            return th_fail(err, TH_ENONE, "semiclassics: the %s horizon %s",
+                           h[i].kind == TH_HORIZON_BLACK ? "black-hole" : "white-hole",
                            h[i].sharp ? "is sharp" : "has surface gravity 0");
         *(white ? &valley->white : &valley->black) = h[i];
         found += white ? 2 : 1;

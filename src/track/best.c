@@ -68,7 +68,7 @@ static th_status refine(const th_track *t, double low, double high, const th_poi
             g[0] = -1.0;
         }
     }
-    out->error = high - low;
+    out->error = fmax(high - out->length, out->length - low);
     th_point_clear(&point);
     return st;
 }

@@ -131,15 +131,16 @@ static double coarse_error(const th_track *t, int branch, double speed)
         const double left = t->node[b].length - t->node[a].length;
         const double right = t->node[c].length - t->node[b].length;
 
-        if (m[0] != NULL && m[1] != NULL && m[2] != NULL)
-            sum += (0.5 * (m[0]->omega_im + m[1]->omega_im) * left +
-                    0.5 * (m[1]->omega_im + m[2]->omega_im) * right -
-                    0.5 * (m[0]->omega_im + m[2]->omega_im) * (left + right)) /
+        if (m[0] != NULL && m[1] != NULL && m[2] != NULL && th_track_joined(t, a, b) &&
+            th_track_joined(t, b, c))
+            sum += fabs(0.5 * (m[0]->omega_im + m[1]->omega_im) * left +
+                        0.5 * (m[1]->omega_im + m[2]->omega_im) * right -
+                        0.5 * (m[0]->omega_im + m[2]->omega_im) * (left + right)) /
                    speed;
         a = c;
         b = th_track_next(t, a + 1, 1);
     }
-    return fabs(sum);
+    return sum;
 }
 
 static int by_gain(const void *a, const void *b)
@@ -181,7 +182,9 @@ th_status th_track_ramp(const th_track *track, double time, th_ramp *out, th_err
     const double line = t->options.to - t->options.from, speed = line / time;
     double known = 0.0;
 
-    if (!(time > 0.0) || !isfinite(speed) || out == NULL)
+    if (out == NULL)
+        return th_fail(err, TH_EINVAL, "track: no place for a ramp");
+    if (!(time > 0.0) || !isfinite(speed))
         return th_fail(err, TH_EINVAL, "track: a ramp in a time of %g, want > 0", time);
     *out = (th_ramp){.count = t->branches};
     out->gain = th_alloc((size_t)t->branches, sizeof *out->gain);

@@ -181,8 +181,11 @@ static int mark(const th_track *t, bool *halve)
             scale = fmax(scale, fastest(&t->node[i]));
     for (int i = 0; i + 1 < t->count; i++) {
         const th_track_node *a = &t->node[i], *b = a + 1;
+        const int left = th_track_next(t, i, -1), right = th_track_next(t, i + 1, 1);
 
-        halve[i] = th_track_answered(a) && th_track_answered(b) && !same_modes(a, b) &&
+        /* also beside a point without an answer: it may sit on the change */
+        halve[i] = left >= 0 && right >= 0 && (th_track_answered(a) || th_track_answered(b)) &&
+                   !same_modes(&t->node[left], &t->node[right]) &&
                    b->length - a->length > f->change * line;
     }
     for (int i = 0; i + 2 < t->count; i++) {
@@ -337,16 +340,19 @@ static th_status show(th_track *t, th_error *err)
     return TH_OK;
 }
 
-/* The widest band of the flows that exist, at a few lengths: a scale. */
+/* The widest band of a few of the flows that exist: a scale. */
 static double band(const th_track *t)
 {
     double most = 0.0;
 
     for (int i = 0; i <= 4; i++) {
+        const int at = th_track_next(t, i * (t->count - 1) / 4, i < 2 ? 1 : -1);
         th_flow_setup setup = t->setup;
         th_flow *flow = NULL;
 
-        setup.value[t->options.key] = t->node[i * (t->count - 1) / 4].length;
+        if (at < 0)
+            continue;
+        setup.value[t->options.key] = t->node[at].length;
         setup.given[t->options.key] = true;
         if (th_flow_build(&setup, &flow, NULL) == TH_OK)
             most = fmax(most, th_flow_band_limit(flow));
