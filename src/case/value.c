@@ -95,9 +95,12 @@ th_status th_case_quantity(const th_case_source *source, const th_scale *scale, 
     return TH_OK;
 }
 
-/* Copy the text from begin to end without the blanks around it; "" when it does not fit. */
+/* Copy the text from begin to end without the blanks around it; "" when it does not fit, or when
+ * there is none ("1 to in 5", where both words share a blank). */
 static void copy_part(const char *begin, const char *end, char part[TH_PART_MAX])
 {
+    if (end < begin)
+        end = begin;
     while (begin < end && *begin == ' ')
         ++begin;
     while (end > begin && end[-1] == ' ')

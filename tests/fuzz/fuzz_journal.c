@@ -25,8 +25,13 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
         if (!th_journal_has(journal, i))
             continue;
         found++;
-        if (th_journal_get(journal, i, &point, &err) != TH_OK)
-            abort();
+        if (th_journal_get(journal, i, &point, &err) != TH_OK) {
+            /* a line whose checksum is right and whose words are not: the fuzzer solves checksums
+             */
+            if (err.status != TH_EIO || err.text[0] == '\0')
+                abort();
+            continue;
+        }
         for (int k = 0; k < point.count; k++)
             if (!isfinite(point.mode[k].omega_re) || !isfinite(point.mode[k].omega_im))
                 abort();
