@@ -413,6 +413,30 @@ static void test_on_switch(void **state)
     th_track_destroy(t);
 }
 
+/* How fast modes mix at a merger depends on the speed of the ramp, not on how finely the line, here
+ * one of 3.5 and one of 0.5, resolves the square root (a tenth: the slope is taken over whole
+ * intervals). */
+static void test_worst(void **state)
+{
+    const double merger = switch_on(3), speed = 0.03;
+    th_flow_setup s = step();
+    double worst[2];
+
+    (void)state;
+    for (int i = 0; i < 2; i++) {
+        const double from = merger - (i == 0 ? 2 : 0.27), to = merger + (i == 0 ? 1.5 : 0.24);
+        th_track *t = track_of(&s, from, to, 0, 1);
+        th_ramp r = ramp_of(t, (to - from) / speed);
+
+        worst[i] = r.worst;
+        close_to("where", r.worst_length, merger, 0.2);
+        th_ramp_clear(&r);
+        th_track_destroy(t);
+    }
+    assert_true(worst[0] > 0);
+    close_to("worst", worst[1] / worst[0], 1, 0.1);
+}
+
 /* A ring on which an oscillating pair dies as it collides with one of opposite energy. There the
  * square of the difference of both frequencies, and so (Im omega)^2, is analytic in the length and
  * passes zero: three samples farther off say where. The first point against th_point_answer. */
@@ -545,8 +569,8 @@ int main(void)
         cmocka_unit_test(test_gain),   cmocka_unit_test(test_threads),
         cmocka_unit_test(test_edges),  cmocka_unit_test(test_failed),
         cmocka_unit_test(test_narrow), cmocka_unit_test(test_on_switch),
-        cmocka_unit_test(test_ring),   cmocka_unit_test(test_errors),
-        cmocka_unit_test(test_memory),
+        cmocka_unit_test(test_worst),  cmocka_unit_test(test_ring),
+        cmocka_unit_test(test_errors), cmocka_unit_test(test_memory),
     };
 
     openblas_set_num_threads(1);

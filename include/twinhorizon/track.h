@@ -30,7 +30,7 @@ typedef struct {
     th_point_state state;
     int unstable; /* both signs of Re omega counted; 0 where state is failed */
     int count;
-    const th_track_mode *mode; /* [count] fastest first; empty where state is failed */
+    const th_track_mode *mode; /* [count] fastest first; empty unless state is ok */
 } th_track_point;
 
 enum { TH_TRACK_POINTS = 257, TH_TRACK_POINTS_CLOSED = 65 };
@@ -86,8 +86,8 @@ typedef struct {
     double best_error;   /* sum of the branches' errors */
     double dominant;     /* the length at which the mode with the largest gain grows fastest */
     double unanswered;   /* share of the line between points without an answer, 0..1 */
-    double worst;        /* largest |d omega/dt|/distance^2 of the leading branch to another one; 0
-                            when it is always alone */
+    double worst;        /* largest |d omega/dt|/distance^2 of the leading branch to another one,
+                            the slope taken over the time 1/distance; 0 when it is always alone */
     double worst_length; /* where; 0 when it is always alone */
 } th_ramp;
 
@@ -96,12 +96,14 @@ typedef struct {
  *
  * Following a branch is doubtful where modes mix, |d omega/dt| above a tenth of the square of the
  * distance to the nearest other growing mode or mirror image of one, and where the mode changes
- * before it grows, |d omega/dt| above three times |omega|^2. The gain of a ramp along which a
- * single mode grows is right to a per cent even through a merger (measured); with several modes
- * what one gains leaks into the others, and the contrast may end an e-folding or more away from
- * either gain. What success does not prove: the gain is the exponent only; the shape of the mode
- * changes on the way, which multiplies the contrast by a factor of order one. The flow must be
- * stationary at every length: a ramp that shakes the condensate makes excitations of its own.
+ * before it grows, |d omega/dt| above three times |omega|^2. For mixing d omega/dt is the slope
+ * over the time 1/distance: at a merger the one at a point has no bound, but passes at once. The
+ * gain of a ramp along which a single mode grows is right to a per cent even through a merger
+ * (measured); with several modes what one gains leaks into the others, and the contrast may end an
+ * e-folding or more away from either gain. What success does not prove: the gain is the exponent
+ * only; the shape of the mode changes on the way, which multiplies the contrast by a factor of
+ * order one. The flow must be stationary at every length: a ramp that shakes the condensate makes
+ * excitations of its own.
  * @retval TH_EINVAL  time is not > 0
  * @retval TH_ENOMEM
  */

@@ -50,29 +50,52 @@ static double distance(const th_track_node *node, const th_track_mode *m)
     return least;
 }
 
-/* |d omega/dt| of a branch on an interval. */
-static double change(const th_track_node *a, const th_track_mode *at_a, const th_track_node *b,
-                     const th_track_mode *at_b, double speed)
+/* |d omega/dt| of a branch from node a to node b. */
+static double change(const th_track *t, int branch, int a, int b, double speed)
 {
-    return cabs(omega_of(at_b) - omega_of(at_a)) / (b->length - a->length) * speed;
+    const th_track_node *left = &t->node[a], *right = &t->node[b];
+
+    return cabs(omega_of(find(right, branch)) - omega_of(find(left, branch))) /
+           (right->length - left->length) * speed;
 }
 
-/* The mixing parameter of a branch on an interval. */
-static double mixing(const th_track_node *a, const th_track_mode *at_a, const th_track_node *b,
-                     const th_track_mode *at_b, double speed)
+/* The next answered node with the branch from `at` on, in steps of `by`; -1 where the branch or
+ * what is known ends. */
+static int along(const th_track *t, int branch, int at, int by)
 {
-    const double d = fmin(distance(a, at_a), distance(b, at_b));
+    const int next = th_track_next(t, at + by, by);
 
-    return d > 0.0 ? change(a, at_a, b, at_b, speed) / (d * d) : HUGE_VAL;
+    if (next < 0 || find(&t->node[next], branch) == NULL ||
+        !th_track_joined(t, next < at ? next : at, next < at ? at : next))
+        return -1;
+    return next;
 }
 
-static bool doubtful(const th_track_node *a, const th_track_mode *at_a, const th_track_node *b,
-                     const th_track_mode *at_b, double speed)
+/* The mixing parameter of a branch on the interval of nodes a, b: |d omega/dt|/d^2, with the slope
+ * over the time 1/d that a beat of the two modes takes. At a square root the slope on a short
+ * interval is as large as one likes, but passes before modes can mix. */
+static double mixing(const th_track *t, int branch, int a, int b, double speed)
 {
-    const double size = fmin(cabs(omega_of(at_a)), cabs(omega_of(at_b)));
+    const th_track_node *node = t->node;
+    const double middle = 0.5 * (node[a].length + node[b].length);
+    const double d = fmin(distance(&node[a], find(&node[a], branch)),
+                          distance(&node[b], find(&node[b], branch)));
+    const double half = d > 0.0 ? 0.5 * speed / d : 0.0;
 
-    return mixing(a, at_a, b, at_b, speed) > doubt ||
-           change(a, at_a, b, at_b, speed) > sudden * size * size;
+    for (int next; middle - node[a].length < half && (next = along(t, branch, a, -1)) >= 0;)
+        a = next;
+    for (int next; node[b].length - middle < half && (next = along(t, branch, b, 1)) >= 0;)
+        b = next;
+    return d > 0.0 ? change(t, branch, a, b, speed) / (d * d) : HUGE_VAL;
+}
+
+static bool doubtful(const th_track *t, int branch, int a, int b, double speed)
+{
+    const double size =
+        fmin(cabs(omega_of(find(&t->node[a], branch))), cabs(omega_of(find(&t->node[b], branch))));
+
+    return mixing(t, branch, a, b, speed) > doubt ||
+           change(t, branch, a, b, speed) > sudden * size * size;
 }
 
 static double fastest(const th_track_node *node)
@@ -81,10 +104,10 @@ static double fastest(const th_track_node *node)
 }
 
 /* One interval of a branch; a mode that is missing at one end began or ended in between. */
-static void add(th_track_gain *g, const th_track_node *a, const th_track_node *b, double speed)
+static void add(const th_track *t, th_track_gain *g, int a, int b, double speed)
 {
-    const th_track_mode *at_a = find(a, g->branch), *at_b = find(b, g->branch);
-    const double time = (b->length - a->length) / speed;
+    const th_track_mode *at_a = find(&t->node[a], g->branch), *at_b = find(&t->node[b], g->branch);
+    const double time = (t->node[b].length - t->node[a].length) / speed;
     const double start = at_a != NULL ? at_a->omega_im : 0.0;
     const double end = at_b != NULL ? at_b->omega_im : 0.0;
     double part;
@@ -100,7 +123,7 @@ static void add(th_track_gain *g, const th_track_node *a, const th_track_node *b
         return;
     }
     g->error += 0.5 * (at_a->omega_error + at_b->omega_error) * time;
-    if (doubtful(a, at_a, b, at_b, speed))
+    if (doubtful(t, g->branch, a, b, speed))
         g->doubtful += part;
 }
 
@@ -158,17 +181,14 @@ static void find_worst(const th_track *t, double speed, th_ramp *out)
     const int branch = out->gain[0].branch;
 
     for (int a = th_track_next(t, 0, 1), b; a >= 0; a = b) {
-        const th_track_mode *at_a, *at_b;
         double e;
 
         b = th_track_next(t, a + 1, 1);
         if (b < 0)
             break;
-        at_a = find(&t->node[a], branch);
-        at_b = find(&t->node[b], branch);
-        if (at_a == NULL || at_b == NULL || !th_track_joined(t, a, b))
+        if (find(&t->node[a], branch) == NULL || along(t, branch, a, 1) < 0)
             continue;
-        e = mixing(&t->node[a], at_a, &t->node[b], at_b, speed);
+        e = mixing(t, branch, a, b, speed);
         if (e > out->worst) {
             out->worst = e;
             out->worst_length = 0.5 * (t->node[a].length + t->node[b].length);
@@ -179,11 +199,11 @@ static void find_worst(const th_track *t, double speed, th_ramp *out)
 th_status th_track_ramp(const th_track *track, double time, th_ramp *out, th_error *err)
 {
     const th_track *t = track;
-    const double line = t->options.to - t->options.from, speed = line / time;
+    const double line = t != NULL ? t->options.to - t->options.from : 0.0, speed = line / time;
     double known = 0.0;
 
-    if (out == NULL)
-        return th_fail(err, TH_EINVAL, "track: no place for a ramp");
+    if (t == NULL || out == NULL)
+        return th_fail(err, TH_EINVAL, "track: want a line and a place for a ramp");
     if (!(time > 0.0) || !isfinite(speed))
         return th_fail(err, TH_EINVAL, "track: a ramp in a time of %g, want > 0", time);
     *out = (th_ramp){.count = t->branches};
@@ -208,7 +228,7 @@ th_status th_track_ramp(const th_track *track, double time, th_ramp *out, th_err
         out->best +=
             0.5 * (fastest(left) + fastest(right)) * (right->length - left->length) / speed;
         for (int k = 0; k < t->branches; k++)
-            add(&out->gain[k], left, right, speed);
+            add(t, &out->gain[k], a, b, speed);
     }
     for (int k = 0; k < t->branches; k++) {
         th_track_gain *g = &out->gain[k];
