@@ -357,7 +357,7 @@ for c in (rb, k39, well):
     compare(f"{c.name}: lengths", p, list(zip(best.groups(), values, (4, 4, 4, 4, 1, 4)))
             + list(zip(first.groups(), (values[3], values[2]), (4, 4))))
     single = re.findall(r"single growing mode from (?:\(start\) )?([\d.]+) to ([\d.]+)(?: \(end\))? um; there "
-                        r"fastest ([\d.]+) /s at ([\d.]+) um", p.text)
+                        r"fastest ([\d.]+) /s at about ([\d.]+) um", p.text)
     rows = p.items("single_mode", "from")
     pairs = [pair for i, row in zip(rows, single) for pair in zip(
         row, (1e6 * p("single_mode", i, "from"), 1e6 * p("single_mode", i, "to"), p("single_mode", i, "growth"),
